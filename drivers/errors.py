@@ -6,7 +6,8 @@
     ├── ResourceError      a resource string, dialect or option is wrong        (set-up)
     ├── WireError          the connection
     │   ├── NoAnswer           nothing, or not all, came in time
-    │   └── ConnectionLost     refused, closed, gone
+    │   ├── ConnectionLost     refused, closed, gone
+    │   └── OutOfStep          what comes next may answer an earlier question: reopen first
     └── AnswerError        something came, and it is not right
         ├── InstrumentError    the instrument's own error queue
         └── NotUsable          NaN, infinity or overload where a number should be; a frequency read back different
@@ -42,6 +43,10 @@ class NoAnswer(WireError):
 
 class ConnectionLost(WireError):
     """Refused, closed by the other side, or gone."""
+
+
+class OutOfStep(WireError):
+    """Question and answer no longer belong together: unread bytes, or use after a timeout without reopening."""
 
 
 class AnswerError(DriverError):

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 @dataclass(frozen=True, slots=True)
 class Identity:
-    """An instrument as it named itself (IEEE 488.2 ``*IDN?``: maker, model, serial, firmware), its resource and dialect.
+    """An instrument as it named itself (IEEE 488.2 ``*IDN?``), its resource and dialect.
 
     ``u_z_relative``, ``u_f_relative``: standard uncertainties (1) its dialect states for |Z| and frequency;
     ``noise_relative``: standard deviation of a reading's real and of its imaginary part, over |Z|.
@@ -34,7 +34,7 @@ class Identity:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Trace:
-    """Frequencies ``(N,)`` in hertz as the instrument reads them back, impedances ``(N,)`` in ohm, in the order asked."""
+    """Frequencies ``(N,)`` in hertz as read back, impedances ``(N,)`` in ohm, in the order asked."""
 
     f_hz: NDArray[np.float64]
     z_ohm: NDArray[np.complex128]

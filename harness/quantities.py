@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 import re
+from decimal import Decimal
 
 PREFIXES = {
     "f": -15, "p": -12, "n": -9, "u": -6, "µ": -6, "μ": -6, "m": -3, "": 0, "k": 3, "M": 6, "G": 9, "T": 12,
@@ -19,8 +20,8 @@ _UNITS: dict[str, tuple[str, float, bool]] = {
     "Hz": ("Hz", 1.0, True),
     "ohm": ("ohm", 1.0, True),
     "Ohm": ("ohm", 1.0, True),
-    "Ω": ("ohm", 1.0, True),
-    "Ω": ("ohm", 1.0, True),
+    "\u03a9": ("ohm", 1.0, True),  # Greek capital omega
+    "\u2126": ("ohm", 1.0, True),  # the ohm sign, which looks the same
     "F": ("F", 1.0, True),
     "H": ("H", 1.0, True),
     "S": ("S", 1.0, True),
@@ -40,15 +41,21 @@ _UNITS: dict[str, tuple[str, float, bool]] = {
     "°": ("deg", 1.0, False),
     "1": ("1", 1.0, False),
     "": ("1", 1.0, False),
-    "%": ("1", 1e-2, False),
-    "ppm": ("1", 1e-6, False),
+    "%": ("1", 1.0, False),
+    "ppm": ("1", 1.0, False),
     "1/K": ("1/K", 1.0, False),
-    "%/K": ("1/K", 1e-2, False),
-    "ppm/K": ("1/K", 1e-6, False),
+    "%/K": ("1/K", 1.0, False),
+    "ppm/K": ("1/K", 1.0, False),
 }
+_OWN_POWERS = {"%": -2, "%/K": -2, "ppm": -6, "ppm/K": -6}
 
 _SHOWN = {"ohm": "Ω", "degC": "°C", "deg": "°", "1": ""}
-_QUANTITY = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(\S*)\s*")
+# Thousands may stand apart, as ``format_si`` writes them: a space, or a no-break, thin or narrow one.
+_SPACES = " \u00a0\u2009\u202f"
+_GROUPED = rf"[0-9]{{1,3}}(?:[{_SPACES}][0-9]{{3}})+(?![0-9])\.?[0-9]*"
+_NUMBER = rf"[+-]?(?:{_GROUPED}|[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
+_QUANTITY = re.compile(rf"\s*({_NUMBER})\s*(\S*)\s*")
+_DECIMAL_COMMA = re.compile(r"\s*[+-]?[0-9]+,[0-9].*")
 
 
 class QuantityError(ValueError):
@@ -64,7 +71,7 @@ def unit_factor(unit: str, dimension: str) -> tuple[float, int]:
     unit = unit.strip()
     if unit in _UNITS:
         si, factor, _ = _UNITS[unit]
-        power = 0
+        power = _OWN_POWERS.get(unit, 0)
     else:
         si, factor, prefixable = _UNITS.get(unit[1:], ("", 1.0, False))
         if unit[:1] not in PREFIXES or not prefixable:
@@ -76,13 +83,15 @@ def unit_factor(unit: str, dimension: str) -> tuple[float, int]:
 
 
 def scale(value: float, unit: str, dimension: str) -> float:
-    """``value`` given in ``unit`` as a number of SI units, rounded once (1670.1 kHz is 1670100.0)."""
+    """``value`` given in ``unit`` as a number of SI units: 1.005 kHz is 1005.0, as on paper.
+
+    The value is taken as the decimal number that it is written as (its shortest text), and the product is rounded
+    once; binary arithmetic would make 1004.9999999999999 of that example. Infinity and NaN stay what they are.
+    """
     factor, power = unit_factor(unit, dimension)
-    ten = 10.0 ** abs(power)  # exact up to 1e22
-    exact = value * ten if power >= 0 else value / ten
-    if factor in (1e-2, 1e-6):
-        return exact / (1 / factor)
-    return exact * factor
+    if not math.isfinite(value):
+        return float(value)
+    return float(Decimal(repr(float(value))).scaleb(power) * Decimal(factor))
 
 
 def parse(text: str, dimension: str) -> float:
@@ -92,12 +101,17 @@ def parse(text: str, dimension: str) -> float:
     (1650000.0, 0.0005)
     """
     match = _QUANTITY.fullmatch(text)
+    if _DECIMAL_COMMA.fullmatch(text):
+        raise QuantityError(f"'{text}' has a comma in its number; write a decimal point and no thousands separators")
     if not match:
         raise QuantityError(f"cannot read '{text}' as a number with a unit such as '1.5 {_example(dimension)}'")
     number, unit = match.groups()
     if not unit and dimension != "1":
         raise QuantityError(f"'{text}' has no unit; expected {_would_do(dimension)}")
-    return scale(float(number), unit, dimension)
+    value = scale(float(re.sub(f"[{_SPACES}]", "", number)), unit, dimension)
+    if not math.isfinite(value):
+        raise QuantityError(f"'{text}' is too large a number")
+    return value
 
 
 def format_si(value: float, unit: str, *, digits: int = 6) -> str:
@@ -106,8 +120,11 @@ def format_si(value: float, unit: str, *, digits: int = 6) -> str:
     >>> format_si(1650000.0, "Hz"), format_si(0.0, "ohm"), format_si(1.2e-9, "F", digits=3)
     ('1.65 MHz', '0 Ω', '1.2 nF')
     """
+    if math.isfinite(value):
+        value = float(f"{value:.{max(1, digits) - 1}e}")  # rounded first, so that 999 999.9 Hz is 1 MHz, not 1 000 kHz
     power = prefix_power(value, unit)
-    return f"{number(value / 10.0**power, digits)} {written(unit, power)}".rstrip()
+    shown = value / 10.0**power if power >= 0 else value * 10.0**-power
+    return f"{number(shown, digits)} {written(unit, power)}".rstrip()
 
 
 def prefix_power(value: float, unit: str) -> int:

@@ -137,7 +137,7 @@ class Value:
 
 @dataclass(frozen=True, slots=True)
 class Mode:
-    """One resonance of the fitted circuit: frequency (Hz), Q, peak conductance (S), and whether it is the wanted one."""
+    """One resonance of the fitted circuit: frequency (Hz), Q, peak conductance (S); is it the wanted one?"""
 
     f_hz: float
     q: float
@@ -298,7 +298,7 @@ class LotSpec:
 class ApplicationSpec:
     """The board that will drive the part, and the liquid, for the application figures.
 
-    ``board_hz`` with its relative ``board_tolerance``; ``loaded_q`` and ``loaded_shift`` (relative) under the real load;
+    ``board_hz`` with its relative ``board_tolerance``; ``loaded_q``, ``loaded_shift`` (relative) under the real load;
     ``mesh`` True: droplets are set by the aperture, not by frequency.
     """
 
@@ -386,7 +386,7 @@ class Opening:
 
 @dataclass(frozen=True, slots=True)
 class Record:
-    """The evidence of one attempt. ``sweep`` is None where the bench gave none; ``final`` False: another try follows."""
+    """The evidence of one attempt. ``sweep`` None: the bench gave none; ``final`` False: another try follows."""
 
     opening: Opening
     sweep: Sweep | None

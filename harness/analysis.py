@@ -1,0 +1,209 @@
+"""From a sweep as logged to its Fit and its Judgement: the one path for screening, replay, planning and ``fit``.
+
+PURE. The fixture's share is taken off, the circuit and window come from the limit file (or, for a lone log, from
+the data), characteristics get their uncertainties, and the judge decides. The same sweep, limits and version give
+the same bits wherever this runs.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from harness.characteristics import CHARACTERISTICS
+from harness.correction import fixture
+from harness.fitting import model, single, values
+from harness.fitting.single import Choice, SingleFit
+from harness.judging import application
+from harness.judging.judge import judge
+from harness.records import (
+    Caveat,
+    Complexes,
+    Correction,
+    Fit,
+    FitStatus,
+    Floats,
+    Judgement,
+    LimitSet,
+    Mode,
+    Reading,
+    Residual,
+    Sweep,
+    Value,
+)  # fmt: skip
+
+NO_FIXTURE = Correction()
+_SHAPE_ONLY = ("fs", "fp", "bandwidth", "qm", "q_half_power", "unwanted_f")
+_SINGLE_SIDED_95 = 1.645
+
+
+def analyse(sweep: Sweep, limits: LimitSet, correction: Correction = NO_FIXTURE) -> tuple[Fit, Judgement]:
+    """Fit one sweep as the limit file says, and judge it."""
+    mode = limits.mode
+    choice = Choice(mode.search_hz, branches=mode.branches, span=mode.span)
+    fit = _fit(sweep, correction, choice, values.Wanted(mode.kind, mode.poisson))
+    if fit.status is FitStatus.OK:
+        low = _low_frequency(sweep, correction, _at_hz(limits))
+        figures, told = application.figures(fit.values, limits.application)
+        fit = replace(fit, values={**fit.values, **low, **figures}, caveats=(*fit.caveats, *told))
+    first = None if sweep.z_ohm.size == 0 else Reading("first", float(sweep.f_hz[0]), complex(sweep.z_ohm[0]))
+    judgement = judge(fit, limits, sweep.conditions, sweep.readings, first=first, noise_relative=sweep.noise_relative)
+    return fit, judgement
+
+
+def fit_log(sweep: Sweep, search_hz: tuple[float, float] | None = None) -> Fit:
+    """Characteristics of a lone log: no limits, so the data choose the circuit by information criterion.
+
+    The wanted mode is the one of largest conductance, inside ``search_hz`` if given.
+    """
+    finite = sweep.f_hz[np.isfinite(sweep.f_hz)]
+    whole = (float(finite.min()), float(finite.max())) if finite.size else (0.0, 0.0)
+    choice = Choice(search_hz or whole, choose_series_resistance=sweep.absolute)
+    return _fit(sweep, NO_FIXTURE, choice, values.Wanted())
+
+
+def _fit(sweep: Sweep, correction: Correction, choice: Choice, wanted: values.Wanted) -> Fit:
+    z = fixture.correct(sweep.f_hz, sweep.z_ohm, correction)
+    found = single.fit_one(sweep.f_hz, z, choice, noise_relative=sweep.noise_relative)
+    if found.status is not FitStatus.OK:
+        return Fit(found.status, found.message, caveats=tuple(_data_caveats(found)))
+    shifts = values.Shifts(_shifts(sweep, found, z, correction))
+    numbers, budget = values.with_uncertainty(
+        found.parameters, found.free, found.covariance, wanted, shifts, sweep.u_z_relative, sweep.u_f_relative
+    )
+    modes = _modes(found)
+    extra, extra_caveats = _unwanted(found, choice.window_hz, sweep.u_f_relative)
+    caveats = [*_data_caveats(found), *_model_caveats(found, sweep), *values.absent(numbers), *extra_caveats]
+    caveats += _extrapolated(found, numbers)
+    numbers |= extra
+    if not sweep.absolute:
+        numbers, told = _shape_only(numbers)
+        caveats.append(told)
+    used = found.data.f_hz[0][found.data.weight[0] > 0]
+    return Fit(
+        FitStatus.OK,
+        found.message,
+        numbers,
+        modes,
+        Residual(found.relative_rms, found.dof),
+        tuple(caveats),
+        budget,
+        (float(used[0]), float(used[-1])),
+    )
+
+
+def _shifts(sweep: Sweep, found: SingleFit, z: Complexes, correction: Correction) -> dict[str, Floats]:
+    """Refits: with another span, and under the correction moved by each of its uncertainties."""
+    moves = {
+        "correction rs": replace(correction, rs_ohm=correction.rs_ohm + correction.u_rs_ohm),
+        "correction ls": replace(correction, ls_h=correction.ls_h + correction.u_ls_h),
+        "correction cp": replace(correction, cp_f=correction.cp_f + correction.u_cp_f),
+    }
+    moves = {name: moved for name, moved in moves.items() if moved != correction}
+    f = found.data.f_hz[0]
+    z0 = found.data.r_ohm[0] + 1j * found.data.x_ohm[0]
+    raw = fixture.embed(f, z0, correction)
+    impedances = [np.asarray(fixture.correct(f, raw, moved)) for moved in moves.values()]
+    return dict(zip(["model", *moves], single.refits(found, impedances), strict=True))
+
+
+def _modes(found: SingleFit) -> tuple[Mode, ...]:
+    circuit = model.circuit_of(found.parameters)
+    rows = zip(circuit.f_hz, circuit.q, circuit.g_s, strict=True)
+    return tuple(Mode(float(f), float(q), float(g), k == 0) for k, (f, q, g) in enumerate(rows))
+
+
+def _unwanted(
+    found: SingleFit, window_hz: tuple[float, float], u_f_relative: float
+) -> tuple[dict[str, Value], list[Caveat]]:
+    """The strongest other mode inside the window and the data, or the floor below which one could hide."""
+    circuit = model.circuit_of(found.parameters)
+    used = found.data.f_hz[0][found.data.weight[0] > 0]
+    low, high = max(window_hz[0], float(used[0])), min(window_hz[1], float(used[-1]))
+    others = [k for k in range(1, circuit.f_hz.size) if low <= circuit.f_hz[k] <= high]
+    if not others:
+        text = f"no unwanted mode seen; one of less than {found.floor:.2g} of the wanted one's conductance could hide"
+        u = found.floor / _SINGLE_SIDED_95 if np.isfinite(found.floor) else None
+        strongest = Value(0.0 if u is not None else None, u, "1")
+        code = "floor" if u is not None else "not-reached"
+        return {"unwanted_g": strongest, "unwanted_f": Value(None, None, "Hz")}, [Caveat(code, "unwanted_g", text)]
+    k = max(others, key=lambda j: circuit.g_s[j])
+    at = model.FIRST_BRANCH + model.BRANCH * k
+    ratio, f = float(circuit.g_s[k] / circuit.g_s[0]), float(circuit.f_hz[k])
+    slope = np.zeros(len(found.free))
+    slope[found.free.index(at + model.LN_G)] = 1.0
+    slope[found.free.index(model.FIRST_BRANCH + model.LN_G)] = -1.0
+    u_ratio = ratio * float(np.sqrt(slope @ found.covariance @ slope))
+    row = found.free.index(at + model.LN_F)
+    u_f = f * float(np.hypot(np.sqrt(found.covariance[row, row]), u_f_relative))
+    return {"unwanted_g": Value(ratio, u_ratio, "1"), "unwanted_f": Value(f, u_f, "Hz")}, []
+
+
+def _at_hz(limits: LimitSet) -> float | None:
+    """The frequency at which the limit file wants the low-frequency capacitance, if it does."""
+    asked = [r.at_hz for r in limits.requirements if r.at_hz is not None]
+    return asked[0] if asked else None
+
+
+def _low_frequency(sweep: Sweep, correction: Correction, at_hz: float | None) -> dict[str, Value]:
+    """Capacitance and loss from the contact reading before the sweep, as a parallel C and tan δ."""
+    near = [
+        r for r in sweep.readings
+        if r.stage == "contact before" and (at_hz is None or abs(r.f_hz / at_hz - 1) < 0.01)
+    ]  # fmt: skip
+    if not near:
+        return {}
+    reading = near[0]
+    z = complex(fixture.correct(np.array([reading.f_hz]), np.array([reading.z_ohm]), correction)[0])
+    y = 1 / z
+    c = y.imag / (2 * np.pi * reading.f_hz)
+    loss = y.real / y.imag
+    # the stray capacitance is taken off C one for one
+    relative = np.hypot(sweep.u_z_relative, sweep.noise_relative or 0.0)
+    u_c = float(np.hypot(abs(c) * relative, correction.u_cp_f))
+    return {"c_at": Value(float(c), u_c, "F"), "tan_delta_at": Value(float(loss), float(relative), "1")}
+
+
+def _shape_only(numbers: dict[str, Value]) -> tuple[dict[str, Value], Caveat]:
+    kept = {k: v if k in _SHAPE_ONLY else Value(None, None, v.unit) for k, v in numbers.items()}
+    text = "the log has no usable absolute level: frequencies and bandwidths only, impedance is not to be had from it"
+    return kept, Caveat("no-level", None, text)
+
+
+def _data_caveats(found: SingleFit) -> list[Caveat]:
+    out = []
+    if found.dropped:
+        out.append(Caveat("dropped", None, f"{found.dropped} points are not numbers and were left out"))
+    if found.bounced:
+        out.append(Caveat("bounced", None, f"{found.bounced} lone wild points were left out (contact bounce?)"))
+    return out
+
+
+def _model_caveats(found: SingleFit, sweep: Sweep) -> list[Caveat]:
+    out = []
+    expected = sweep.noise_relative
+    limit = 3 * np.sqrt(2) * expected if expected else 0.02
+    if found.relative_rms > limit:
+        text = f"the circuit explains the sweep only to {100 * found.relative_rms:.2g} %; uncertainties are widened"
+        out.append(Caveat("model", None, text))
+    elif found.lag_one > 0:
+        text = f"neighbouring residuals are alike (correlation {found.lag_one:.2f}); uncertainties are widened"
+        out.append(Caveat("correlated", None, text))
+    rs = float(found.parameters[-1])
+    if rs > 0:
+        text = f"a series resistance of {rs:.3g} ohm was taken as the leads' and left out of the element"
+        out.append(Caveat("series-resistance", "r1", text))
+    return out
+
+
+def _extrapolated(found: SingleFit, numbers: dict[str, Value]) -> list[Caveat]:
+    used = found.data.f_hz[0][found.data.weight[0] > 0]
+    out = []
+    for key in ("fp", "fn", "fa", "fm", "fr"):
+        value = numbers[key].value if key in numbers else None
+        if value is not None and not used[0] <= value <= used[-1]:
+            sign = CHARACTERISTICS[key].sign
+            text = f"{sign} lies outside the points used ({used[0]:.6g} to {used[-1]:.6g} Hz) and is extrapolated"
+            out.append(Caveat("extrapolated", key, text))
+    return out

@@ -1,0 +1,145 @@
+"""The critical frequencies of a circuit, and what stands at them.
+
+Definitions as in IEEE Std 176-1987 §6 and IEEE Std 177-1966 (cited from memory; the mathematics is derived
+and tested here): fs greatest conductance of the wanted branch; fp pole of Z with losses removed; fm, fn least
+and greatest |Z|; fr, fa zero susceptance, which exist only where M ≥ 1 + √(1 + 1/r), r = C0/C1.
+
+All work on arrays of circuits ``S``, so that an uncertainty by differences costs one pass. Roots are
+bracketed on a grid of the first circuit and then bisected for all: the others must lie close to it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+
+from harness.circuits import resonator
+from harness.circuits.resonator import Circuit
+from harness.records import Complexes, Floats
+
+_BISECTIONS = 60
+
+
+def fp_hz(circuit: Circuit) -> Floats:
+    """Parallel resonance: the next frequency above fs where Im Y, losses removed, is zero; NaN where there is none.
+
+    For one branch f_p = f_s √(1 + C1/C0) exactly. Lossless, B(f) = 2πf C − Σ (G/Q)/(f/f_m − f_m/f) rises
+    from −∞ just above f_s, so between f_s and the next branch (or without bound) it crosses zero at most once.
+    """
+    fs = circuit.fs_hz
+    slope = circuit.g_s / circuit.q
+    above = np.where(circuit.f_hz > fs[..., None] * (1 + 1e-9), circuit.f_hz, np.inf).min(axis=-1)
+    total = slope[..., 0] / (2 * np.pi * fs * np.where(circuit.c_f > 0, circuit.c_f, np.nan))
+    alone = fs * np.sqrt(1 + total)
+    # with branches below fs the zero lies above the single-branch value, so give room before the next branch
+    high = np.where(np.isfinite(above), above * (1 - 1e-12), fs + 4 * (alone - fs) + 0.5 * fs)
+
+    def susceptance(f: Floats) -> Floats:
+        u = f[..., None] / circuit.f_hz - circuit.f_hz / f[..., None]
+        return np.asarray(2 * np.pi * f * circuit.c_f - (slope / u).sum(axis=-1))
+
+    low = fs * (1 + 1e-12)
+    root = bisect(susceptance, low, high)
+    return np.where(np.isfinite(alone) & (susceptance(high) > 0), root, np.nan)
+
+
+def bisect(function: Callable[[Floats], Floats], low: Floats, high: Floats) -> Floats:
+    """Root of ``function`` between ``low`` and ``high`` (shape ``S``), elementwise; the sign must change there."""
+    a, b = np.array(low, dtype=np.float64), np.array(high, dtype=np.float64)
+    sign_a = np.sign(function(a))
+    for _ in range(_BISECTIONS):
+        middle = 0.5 * (a + b)
+        same = np.sign(function(middle)) == sign_a
+        a, b = np.where(same, middle, a), np.where(same, b, middle)
+    return 0.5 * (a + b)
+
+
+def extremum_hz(circuit: Circuit, low_hz: float, high_hz: float, *, greatest: bool) -> Floats:
+    """Frequency of greatest (else least) |Z| inside a range, shape ``S``; NaN where it lies on the range's edge."""
+    f = np.linspace(low_hz, high_hz, 4001)
+    level = np.abs(resonator.impedance(_first(circuit), f))
+    k = int(np.argmax(level) if greatest else np.argmin(level))
+    if k in (0, f.size - 1):
+        return np.full(circuit.c_f.shape, np.nan)
+    return _bisect_bracket(lambda x: _slope(circuit, x), circuit, f[k - 1], f[k + 1])
+
+
+def zero_phase_hz(circuit: Circuit, low_hz: float, high_hz: float, *, last: bool) -> Floats:
+    """First (else last) frequency in a range where Im Z crosses zero, shape ``S``; NaN where it does not."""
+    f = np.linspace(low_hz, high_hz, 4001)
+    x = resonator.impedance(_first(circuit), f).imag
+    crossings = np.flatnonzero(np.sign(x[:-1]) * np.sign(x[1:]) < 0)
+    if crossings.size == 0:
+        return np.full(circuit.c_f.shape, np.nan)
+    # two cells beyond the bracket, so that neighbouring circuits' roots lie inside too, and only them
+    k = int(crossings[-1 if last else 0])
+    if np.count_nonzero(np.abs(crossings - k) <= 5) > 1:
+        return np.full(circuit.c_f.shape, np.nan)
+    low, high = f[max(k - 2, 0)], f[min(k + 3, f.size - 1)]
+    return _bisect_bracket(lambda g: _impedance_at(circuit, g).imag, circuit, low, high)
+
+
+def half_power_hz(circuit: Circuit) -> tuple[Floats, Floats, Floats]:
+    """Frequency of the wanted branch's greatest conductance, and where it has fallen to half, below and above."""
+    one = Circuit(
+        circuit.c_f * 0, circuit.tan_delta, circuit.f_hz[..., :1], circuit.q[..., :1], circuit.g_s[..., :1],
+        circuit.theta_rad[..., :1], circuit.rs_ohm * 0,
+    )  # fmt: skip
+    fs, width = one.fs_hz, one.fs_hz / one.q[..., 0]
+
+    def conductance(f: Floats) -> Floats:
+        return np.asarray(resonator.branch_admittances(one, f[..., None])[..., 0, 0].real)
+
+    def slope(f: Floats) -> Floats:
+        step = 1e-4 * width
+        return conductance(f + step) - conductance(f - step)
+
+    peak = bisect(slope, fs - 0.4 * width, fs + 0.4 * width)
+    half = 0.5 * conductance(peak)
+    below = bisect(lambda f: conductance(f) - half, np.maximum(peak - 3 * width, 1e-3 * fs), peak)
+    above = bisect(lambda f: conductance(f) - half, peak, peak + 3 * width)
+    return peak, below, above
+
+
+def phase_max_deg(circuit: Circuit, low_hz: float, high_hz: float) -> Floats:
+    """Greatest phase of Z inside a range, degrees, shape ``S``."""
+    f = np.linspace(low_hz, high_hz, 4001)
+    k = int(np.argmax(np.angle(resonator.impedance(_first(circuit), f))))
+    near = np.linspace(f[max(k - 2, 0)], f[min(k + 2, f.size - 1)], 41)
+    return np.asarray(np.degrees(np.angle(resonator.impedance(circuit, near)).max(axis=-1)))
+
+
+def figure_of_merit(circuit: Circuit) -> Floats:
+    """M = 1/(2π fs C0 R1) = Q/r (IEEE Std 177)."""
+    fs = circuit.fs_hz
+    return np.asarray(circuit.g_s[..., 0] / (2 * np.pi * fs * resonator.c0_f(circuit)))
+
+
+def level_ohm(circuit: Circuit, f_hz: Floats) -> Floats:
+    """|Z| at one frequency a circuit, ohm, shape ``S``."""
+    return np.asarray(np.abs(_impedance_at(circuit, f_hz)))
+
+
+def _impedance_at(circuit: Circuit, f_hz: Floats) -> Complexes:
+    return np.asarray(resonator.impedance(circuit, f_hz[..., None])[..., 0])
+
+
+def _slope(circuit: Circuit, f_hz: Floats) -> Floats:
+    step = 1e-6 * f_hz * np.minimum(1.0, 100 / circuit.q[..., 0])
+    return level_ohm(circuit, f_hz + step) - level_ohm(circuit, f_hz - step)
+
+
+def _bisect_bracket(function: Callable[[Floats], Floats], circuit: Circuit, low: float, high: float) -> Floats:
+    shape = circuit.c_f.shape
+    return bisect(function, np.full(shape, low), np.full(shape, high))
+
+
+def _first(circuit: Circuit) -> Circuit:
+    """The first of an array of circuits (or the only one)."""
+    if circuit.c_f.ndim == 0:
+        return circuit
+    return Circuit(
+        circuit.c_f[0], circuit.tan_delta[0], circuit.f_hz[0], circuit.q[0], circuit.g_s[0], circuit.theta_rad[0],
+        circuit.rs_ohm[0],
+    )  # fmt: skip

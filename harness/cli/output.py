@@ -1,0 +1,97 @@
+"""What every command prints with, and what it needs from the outside: clock, environment, files."""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Mapping
+from datetime import UTC, datetime
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from harness.errors import FileMistakes, Mistake, RingtrueError
+
+if TYPE_CHECKING:
+    from rich.console import Console
+
+    from harness.records import LimitSet
+    from harness.store import Store
+
+
+def clock() -> str:
+    """Now: UTC, ISO 8601 with microseconds and Z."""
+    return datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%S.%fZ")
+
+
+def environment() -> Mapping[str, str]:
+    return os.environ
+
+
+def console(*, err: bool = False) -> Console:
+    """A rich console on standard output (or error), plain where that is no terminal, wide enough for a log."""
+    from rich.console import Console
+
+    stream = sys.stderr if err else sys.stdout
+    width = None if stream.isatty() else 160
+    return Console(stderr=err, highlight=False, soft_wrap=not stream.isatty(), width=width)
+
+
+def print_json_line(value: object) -> None:
+    """One JSON document on a line of its own, flushed."""
+    from harness.report.json_form import dumps
+
+    print(dumps(value), flush=True)
+
+
+def print_error(error: RingtrueError) -> None:
+    for line in str(error).splitlines():
+        print(f"ringtrue: {line}", file=sys.stderr)
+
+
+def read_text(path: Path) -> str:
+    """A text file in UTF-8, newlines as they are. Raises FileMistakes."""
+    try:
+        return path.read_bytes().decode("utf-8")
+    except UnicodeDecodeError as exc:
+        line = exc.object[: exc.start].count(b"\n") + 1
+        raise FileMistakes([Mistake(str(path), line, "", "the file is not UTF-8 text.", "Save it as UTF-8.")]) from exc
+    except OSError as exc:
+        text = f"the file cannot be read ({exc.strerror or exc})."
+        raise FileMistakes([Mistake(str(path), None, "", text, "Check its name and its permissions.")]) from exc
+
+
+def read_limits(path: Path) -> LimitSet:
+    from harness.judging.limit_file import parse_limits
+
+    return parse_limits(read_text(path), str(path))
+
+
+def open_reading(store: str | None) -> Store:
+    """The store, read-only; never made by reading."""
+    from harness.station.places import store_url
+    from harness.store import open_store
+
+    return open_store(store_url(store, environment(), _station_store()), mode="read", now=clock())
+
+
+def _station_store() -> str | None:
+    """The store that the default station file names, where there is one."""
+    from harness.errors import SetupError
+    from harness.station import parse_station, station_path
+
+    try:
+        path = station_path(None, environment())
+    except SetupError:  # no station on this machine: reading needs none
+        return None
+    return parse_station(read_text(path), str(path)).store
+
+
+def software() -> dict[str, str]:
+    """What judged: versions that go into every record."""
+    import platform
+
+    import numpy
+
+    from harness import __version__
+
+    return {"ringtrue": __version__, "python": platform.python_version(), "numpy": numpy.__version__}

@@ -1,0 +1,322 @@
+"""One sweep, fitted with care: the wanted mode found, the span cut, further modes added while the data ask.
+
+The parameters' covariance comes from the fit; what the choice of span is worth comes from refits, and what the
+fixture's correction is worth from refits under a shifted correction.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from harness.fitting import model, modes, start, trial
+from harness.fitting.model import Data
+from harness.fitting.trial import SIGNIFICANT, Fitted
+from harness.records import Complexes, FitStatus, Floats
+
+_MOST_PHASE = 0.6  # rad: a branch turned further is no resonance but a misfit of something else
+_LEAST_Q_SHARE = 0.25  # of the wanted Q: a broader hump is a misfit of the background, not a mode
+_INNER = 0.7  # share of the span that the refit for the model term keeps
+
+
+@dataclass(frozen=True, slots=True)
+class Choice:
+    """How to fit: where the wanted mode may lie, branches to fit at least and at most, half-width of the span as a
+    share of fs (None: everything), whether a series resistance may be chosen (by information criterion)."""
+
+    window_hz: tuple[float, float]
+    branches: int = 1
+    most_branches: int = 4
+    span: float | None = None
+    choose_series_resistance: bool = False
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SingleFit:
+    """``status`` with a sentence; where ok, the parameters ``(P,)`` (wanted branch first), the free ones' scaled
+    covariance, the noise found (relative), the misfit, the data used and the floor for further modes."""
+
+    status: FitStatus
+    message: str
+    parameters: Floats
+    free: tuple[int, ...]
+    covariance: Floats
+    scale: float
+    relative_rms: float
+    dof: int
+    data: Data
+    floor: float
+    dropped: int = 0
+    bounced: int = 0
+    lag_one: float = 0.0
+
+
+def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: float | None = None) -> SingleFit:
+    """Fit one sweep (``(N,)`` hertz and ohm, corrected for its fixture).
+
+    ``noise_relative``: the instrument's own noise; the covariance is never scaled below it.
+    """
+    good = np.isfinite(f_hz) & (f_hz > 0) & np.isfinite(z_ohm.real) & np.isfinite(z_ohm.imag) & (z_ohm != 0)
+    dropped = int(good.size - good.sum())
+    order = np.argsort(f_hz[good], kind="stable")
+    f, z = f_hz[good][order], z_ohm[good][order]
+    if f.size < 10 or f[-1] <= f[0]:
+        return _refused(FitStatus.BAD_DATA, f"only {f.size} usable points; at least 10 are needed", f, z, dropped)
+    whole = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)))
+    begin, located = _locate(whole, choice)
+    word = str(trial.judge_fit(whole, located, choice.window_hz)[0])
+    if word != "ok" and choice.span is None:
+        begin, located = _second_look(whole, choice, begin, located)
+    data = _cut(whole, located, choice)
+    fitted, free = _grow(data, located if data is whole else _refit(data, located), choice)
+    word = str(trial.judge_fit(data, fitted, choice.window_hz)[0])
+    if word != "ok":
+        status = FitStatus(word)
+        return _refused(status, _explain(status, data, fitted), f, z, dropped)
+    return _finish(data, fitted, free, choice, dropped, noise_relative)
+
+
+def _locate(data: Data, choice: Choice) -> tuple[Floats, Fitted]:
+    """A single branch with motional phase on everything, from three widths; the best of them."""
+    begins = [start.single_branch(data, choice.window_hz, widen=widen)[0] for widen in (1.0, 0.25, 4.0)]
+    rows = data.rows(np.zeros(len(begins), dtype=np.intp))
+    fitted = trial.fit_branches(rows, np.stack(begins), (0, 1, 2, 3, 4, 5))
+    fs = np.exp(fitted.parameters[:, 2])
+    inside = (fs >= choice.window_hz[0]) & (fs <= choice.window_hz[1])
+    cost = np.where(inside & np.isfinite(fitted.cost), fitted.cost, np.inf)
+    best = int(cost.argmin())
+    return begins[best], fitted.row(best)
+
+
+def _second_look(whole: Data, choice: Choice, begin: Floats, located: Fitted) -> tuple[Floats, Fitted]:
+    """The whole sweep does not look like one resonance: look again close to the conductance peak alone."""
+    f0, q0 = np.exp(begin[2]), np.exp(begin[3])
+    near = np.abs(whole.f_hz / f0 - 1) <= max(6 / q0, 0.06)
+    if near.sum() < 10:
+        return begin, located
+    data = Data(whole.f_hz, whole.r_ohm, whole.x_ohm, near.astype(float), None)
+    close = trial.fit_branches(data, begin[None, :], (0, 1, 2, 3, 4, 5))
+    if str(trial.judge_fit(data, close, choice.window_hz)[0]) != "ok":
+        return begin, located
+    again = trial.fit_branches(whole, close.parameters, (0, 1, 2, 3, 4, 5))
+    return begin, again if again.cost[0] <= located.cost[0] else located
+
+
+def _cut(whole: Data, located: Fitted, choice: Choice) -> Data:
+    """Points beyond the span get no weight (the span is a share of fs, as the limit file states it)."""
+    if choice.span is None:
+        return whole
+    fs = float(np.exp(located.parameters[0, 2]))
+    inside = np.abs(whole.f_hz / fs - 1) <= choice.span
+    if inside.sum() < 10:
+        return whole
+    return Data(whole.f_hz, whole.r_ohm, whole.x_ohm, inside.astype(float), None)
+
+
+def _refit(data: Data, located: Fitted) -> Fitted:
+    return trial.fit_branches(data, located.parameters, _free(located.parameters, False))
+
+
+def _free(parameters: Floats, series_resistance: bool) -> tuple[int, ...]:
+    p = parameters.shape[-1]
+    return (*range(p - 1), *((p - 1,) if series_resistance else ()))
+
+
+def _grow(data: Data, fitted: Fitted, choice: Choice) -> tuple[Fitted, tuple[int, ...]]:
+    """Add branches: up to ``branches`` in any case, beyond that while each is significant."""
+    free = _free(fitted.parameters, False)
+    while model.branches_of(fitted.parameters) < choice.most_branches:
+        more = _one_more(data, fitted, free, choice)
+        if more is None:
+            break
+        gain = (fitted.cost[0] - more[0].cost[0]) / max(more[0].scale[0] ** 2, 1e-24)
+        needed = model.branches_of(fitted.parameters) < choice.branches
+        # by Schwarz's criterion with room to spare, since the branch's place was searched for
+        worth = _information(more[0]) < _information(fitted) - 20
+        if not needed and (gain < SIGNIFICANT or not worth):
+            break
+        fitted, free = more
+    return _with_series_resistance(data, fitted, free) if choice.choose_series_resistance else (fitted, free)
+
+
+def _with_series_resistance(data: Data, fitted: Fitted, free: tuple[int, ...]) -> tuple[Fitted, tuple[int, ...]]:
+    wider = (*free, fitted.parameters.shape[-1] - 1)
+    with_rs = trial.fit_branches(data, fitted.parameters, wider)
+    better = _information(with_rs) < _information(fitted) - 10
+    if better and with_rs.converged[0] and with_rs.parameters[0, -1] > 0 and _sane(data, with_rs):
+        return with_rs, wider
+    return fitted, free
+
+
+def _one_more(
+    data: Data, fitted: Fitted, free: tuple[int, ...], choice: Choice
+) -> tuple[Fitted, tuple[int, ...]] | None:
+    """The fit with the branch that helps most added, and its free parameters; None where none makes sense."""
+    circuit = model.circuit_of(fitted.parameters[0])
+    z = data.r_ohm[0] + 1j * data.x_ohm[0]
+    left = modes.leftover(data.f_hz[0], z, fitted.weight[0], circuit)
+    branch, gain = modes.next_branch(left, circuit, _used(data))
+    if gain <= 0:
+        return None
+    begin = modes.with_branch(fitted.parameters[0], branch)
+    last = begin.size - 1 - model.BRANCH
+    free = (*free, *range(last, last + model.BRANCH))
+    more = trial.fit_branches(data, begin[None, :], free)
+    low, high = _used(data)
+    if not low < np.exp(more.parameters[0, last]) < high:
+        # beyond the data only its slope shows: its own width and phase cannot be told from its height
+        begin = more.parameters[0].copy()
+        begin[[last + model.LN_G, last + model.LN_Q, last + model.THETA]] = (
+            begin[last + model.LN_G] + fitted.parameters[0, 3] - begin[last + model.LN_Q],
+            fitted.parameters[0, 3],
+            0.0,
+        )
+        free = tuple(k for k in free if k not in (last + model.LN_Q, last + model.THETA))
+        more = trial.fit_branches(data, begin[None, :], free)
+    if not more.converged[0] or not _sane(data, more):
+        return None
+    return _reordered(data, more, free, choice)
+
+
+def _reordered(
+    data: Data, fitted: Fitted, free: tuple[int, ...], choice: Choice
+) -> tuple[Fitted, tuple[int, ...]] | None:
+    """The same fit with its strongest branch in the window first, solved again if that changed the order."""
+    ordered = modes.wanted_first(fitted.parameters[0], choice.window_hz)
+    if np.array_equal(ordered, fitted.parameters[0]):
+        return fitted, free
+    everything = _free(ordered, False)
+    again = trial.fit_branches(data, ordered[None, :], everything)
+    return (again, everything) if again.converged[0] and _sane(data, again) else None
+
+
+def _used(data: Data) -> tuple[float, float]:
+    """The range of the points that count."""
+    kept = data.f_hz[0][data.weight[0] > 0]
+    return float(kept[0]), float(kept[-1])
+
+
+def _sane(data: Data, fitted: Fitted) -> bool:
+    """Branches that take power, not wider than the data, and none so near a neighbour that both are one."""
+    circuit = model.circuit_of(fitted.parameters[0])
+    used = data.f_hz[0][fitted.weight[0] > 0]
+    span = used[-1] - used[0]
+    if not np.isfinite(fitted.cost[0]) or np.any(np.abs(circuit.theta_rad) > _MOST_PHASE):
+        return False
+    width = circuit.f_hz / circuit.q
+    inside = (circuit.f_hz > used[0] - span) & (circuit.f_hz < used[-1] + span)
+    wanted_inside = used[0] <= circuit.f_hz[0] <= used[-1]
+    narrow = circuit.q > max(1.0, _LEAST_Q_SHARE * float(circuit.q[0]))
+    return bool(wanted_inside and inside.all() and width[0] < span and narrow.all())
+
+
+def _information(fitted: Fitted) -> float:
+    """Schwarz's criterion (G. Schwarz, 1978) for Gaussian noise of unknown scale."""
+    n = 2 * float(fitted.weight[0].sum())
+    parameters = n - float(fitted.dof[0])
+    return float(n * np.log(max(fitted.cost[0], 1e-300) / n) + parameters * np.log(n))
+
+
+def _finish(
+    data: Data, fitted: Fitted, free: tuple[int, ...], choice: Choice, dropped: int, noise: float | None
+) -> SingleFit:
+    circuit = model.circuit_of(fitted.parameters[0])
+    z = data.r_ohm[0] + 1j * data.x_ohm[0]
+    left = modes.leftover(data.f_hz[0], z, fitted.weight[0], circuit)
+    used = Data(data.f_hz, data.r_ohm, data.x_ohm, fitted.weight, None)
+    scale = float(fitted.scale[0])
+    lag = _lag_one(used, fitted)
+    # neighbours that err alike tell less than they seem to: a first-order autoregression's variance is
+    # (1 + ρ)/(1 − ρ) times as large
+    stretch = (1 + lag) / (1 - lag) * max(1.0, (noise or 0.0) / max(scale, 1e-30)) ** 2
+    smallest = modes.floor(left, circuit, _overlap(_used(used), choice.window_hz), max(scale, noise or 0.0))
+    return SingleFit(
+        FitStatus.OK,
+        "resonance found and resolved",
+        fitted.parameters[0],
+        free,
+        fitted.covariance[0] * stretch,
+        scale,
+        float(fitted.relative_rms[0]),
+        int(fitted.dof[0]),
+        used,
+        smallest,
+        dropped,
+        int(data.weight.sum() - fitted.weight.sum()),
+        lag,
+    )
+
+
+def _overlap(a: tuple[float, float], b: tuple[float, float]) -> tuple[float, float]:
+    return max(a[0], b[0]), min(a[1], b[1])
+
+
+def _lag_one(data: Data, fitted: Fitted) -> float:
+    """Correlation of neighbouring residuals, between 0 and 0.9; 0 where it could be chance."""
+    value = model.misfit(fitted.parameters, data)[0]
+    n = data.f_hz.shape[-1]
+    kept = data.weight[0] > 0
+    parts = [part[kept] for part in (value[:n], value[n:])]
+    below = sum(float((part**2).sum()) for part in parts)
+    rho = sum(float((part[1:] * part[:-1]).sum()) for part in parts) / max(below, 1e-300)
+    return float(np.clip(rho, 0.0, 0.9)) if rho > 3 / np.sqrt(2 * kept.sum()) else 0.0
+
+
+def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:
+    """Parameters again: first with the inner share of the points' span, then for each of ``impedances`` (same points).
+
+    One batch, begun from the fit itself. A row that does not converge comes back as the fit's own parameters.
+    """
+    data = fit.data
+    fs = float(np.exp(fit.parameters[2]))
+    used = data.f_hz[0][data.weight[0] > 0]
+    reach = max(used[-1] - fs, fs - used[0]) * _INNER
+    inner = data.weight[0] * (np.abs(data.f_hz[0] - fs) <= reach)
+    z0 = data.r_ohm[0] + 1j * data.x_ohm[0]
+    z = np.stack([z0, *impedances])
+    weight = np.stack([inner, *([data.weight[0]] * len(impedances))])
+    f = np.repeat(data.f_hz, len(z), axis=0)
+    begin = np.repeat(fit.parameters[None, :], len(z), axis=0)
+    again = trial.fit_branches(model.data_of(f, z, weight), begin, fit.free, rejecting=False)
+    near = np.abs(again.parameters - fit.parameters).max(axis=-1) < 1.0
+    fine = again.converged & near & (weight.sum(axis=-1) > fit.parameters.size)
+    return [row if ok else fit.parameters for row, ok in zip(again.parameters, fine, strict=True)]
+
+
+def _refused(status: FitStatus, message: str, f: Floats, z: Complexes, dropped: int) -> SingleFit:
+    empty = np.full(7, np.nan)
+    data = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)))
+    return SingleFit(status, message, empty, (), np.empty((0, 0)), np.nan, np.nan, 0, data, np.inf, dropped)
+
+
+def _explain(status: FitStatus, data: Data, fitted: Fitted) -> str:
+    tell = _EXPLANATIONS.get(status)
+    return tell(data, fitted) if tell else "the sweep cannot be read"
+
+
+def _no_resonance(data: Data, fitted: Fitted) -> str:
+    phase = np.degrees(np.arctan2(data.x_ohm[0], data.r_ohm[0]))[data.weight[0] > 0]
+    level = np.median(np.hypot(data.r_ohm[0], data.x_ohm[0])[data.weight[0] > 0])
+    middle = float(np.median(phase))
+    like = "a capacitor" if middle < -45 else "a coil" if middle > 45 else "a resistor"
+    looks = f"{like} (median |Z| {level:.3g} ohm, phase {middle:.0f} deg)"
+    return f"no resonance in the window; the sweep looks like {looks}"
+
+
+def _not_resolved(data: Data, fitted: Fitted) -> str:
+    circuit = model.circuit_of(fitted.parameters[0])
+    fs, q = float(circuit.f_hz[0]), float(circuit.q[0])
+    near = np.abs(data.f_hz[0] / fs - 1) * 2 * q <= 2
+    points = int((near & (fitted.weight[0] > 0)).sum())
+    return (
+        f"the points do not resolve the resonance near {fs:.6g} Hz: {points} within its width of {fs / q:.3g} Hz; "
+        "measure closer together there"
+    )
+
+
+_EXPLANATIONS: dict[FitStatus, Callable[[Data, Fitted], str]] = {
+    FitStatus.NO_RESONANCE: _no_resonance,
+    FitStatus.NOT_RESOLVED: _not_resolved,
+}

@@ -1,0 +1,152 @@
+"""One try of a circuit on rows of data: solve, drop lone wild points, scale the covariance, say what it is worth."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from harness.fitting import model, solver
+from harness.fitting.model import Data
+from harness.records import Floats
+
+WILD = 8.0  # a lone point this many times the typical misfit, and four times its neighbours', is a bounced contact
+SIGNIFICANT = 60.0  # least fall of misfit²/noise² that a branch must bring, against one found anywhere by chance
+_HALF_POWER_WIDTHS = 2.0
+_LEAST_POINTS = 3  # within two half-power half-widths of fs
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Fitted:
+    """Rows fitted: ``parameters`` (B, P); ``covariance`` (B, F, F) of the free ones, scaled; ``scale`` (B,) the
+    noise estimate (relative, or in units of the sigma given); ``relative_rms`` (B,); ``weight`` (B, N) as used."""
+
+    parameters: Floats
+    covariance: Floats
+    scale: Floats
+    relative_rms: Floats
+    dof: NDArray[np.int64]
+    cost: Floats
+    converged: NDArray[np.bool_]
+    weight: Floats
+
+    def row(self, b: int) -> Fitted:
+        pick = slice(b, b + 1)
+        return Fitted(*(getattr(self, name)[pick] for name in self.__slots__))
+
+
+def fit_branches(data: Data, begin: Floats, free: tuple[int, ...], *, rejecting: bool = True) -> Fitted:
+    """Solve, drop lone wild points once, and solve those rows again. ``free`` lists the parameters to move."""
+    solution = _solve(data, begin, free)
+    weight = data.weight
+    if rejecting:
+        kept = weight * ~_lone_wild(model.misfit(solution.parameters, data), weight)
+        touched = np.flatnonzero((kept != weight).any(axis=-1))
+        if touched.size:
+            weight = kept
+            part = Data(data.f_hz, data.r_ohm, data.x_ohm, weight, data.sigma_ohm)
+            again = _solve(part.rows(touched), solution.parameters[touched], free)
+            solution = _replace(solution, touched, again)
+            data = part
+    return _finish(data, solution, free)
+
+
+def _solve(data: Data, begin: Floats, free: tuple[int, ...]) -> solver.Solution:
+    def evaluate(parameters: Floats, rows: solver.Index) -> tuple[Floats, list[Floats], Floats]:
+        # all rows: no copy
+        part = data if rows.size == len(data.f_hz) else data.rows(rows)
+        with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+            return model.misfit_and_slopes(parameters, part, free)
+
+    return solver.solve(evaluate, begin, free)
+
+
+def _replace(solution: solver.Solution, rows: NDArray[np.intp], new: solver.Solution) -> solver.Solution:
+    parameters, cost = solution.parameters.copy(), solution.cost.copy()
+    normal, converged = solution.normal.copy(), solution.converged.copy()
+    parameters[rows], cost[rows], normal[rows], converged[rows] = new.parameters, new.cost, new.normal, new.converged
+    return solver.Solution(parameters, cost, normal, converged)
+
+
+def _finish(data: Data, solution: solver.Solution, free: tuple[int, ...]) -> Fitted:
+    count = data.weight.sum(axis=-1)
+    dof = np.maximum(2 * count.astype(np.int64) - len(free), 1)
+    reduced = solution.cost / dof
+    scale2 = np.maximum(reduced, 1.0) if data.sigma_ohm is not None else reduced
+    # the scale is itself estimated: a t-distributed quantity's standard deviation (JCGM 100, G.3; JCGM 101, 6.4.9)
+    student = dof / np.maximum(dof - 2, 1)
+    covariance = solver.covariance(solution.normal) * (scale2 * student)[:, None, None]
+    relative = model.misfit(solution.parameters, Data(data.f_hz, data.r_ohm, data.x_ohm, data.weight, None))
+    rms = _measured_rms(solution.parameters, data, relative)
+    return Fitted(
+        solution.parameters, covariance, np.sqrt(scale2), rms, dof, solution.cost, solution.converged, data.weight
+    )
+
+
+def _measured_rms(parameters: Floats, data: Data, relative: Floats) -> Floats:
+    """√mean(|ΔZ|²/|Z|²) over the points kept, |Z| as measured."""
+    circuit = model.circuit_of(parameters)
+    n = data.f_hz.shape[-1]
+    square = relative[:, :n] ** 2 + relative[:, n:] ** 2  # |ΔZ|²/|Z_model|²
+    a, b = model.admittance(circuit, data.f_hz)
+    rm, xm = model.impedance(circuit, a, b)
+    measured = data.r_ohm**2 + data.x_ohm**2
+    ratio = (rm**2 + xm**2) / np.where(measured > 0, measured, 1.0)
+    return np.asarray(np.sqrt((square * ratio).sum(axis=-1) / np.maximum(data.weight.sum(axis=-1), 1)))
+
+
+def _lone_wild(value: Floats, weight: Floats) -> NDArray[np.bool_]:
+    """Points far off while both neighbours are not: a misfit of the model itself is never alone."""
+    n = weight.shape[-1]
+    size = np.sqrt(value[:, :n] ** 2 + value[:, n:] ** 2)
+    if n < 8:
+        return np.zeros(weight.shape, dtype=bool)
+    typical = np.nanmedian(np.where(weight > 0, size, np.nan), axis=-1, keepdims=True)
+    padded = np.pad(size, ((0, 0), (1, 1)))
+    beside = np.maximum(padded[:, :-2], padded[:, 2:])
+    return np.asarray((size > WILD * np.maximum(typical, 1e-12)) & (size > 4 * beside) & (weight > 0))
+
+
+def judge_fit(data: Data, fitted: Fitted, window: tuple[float, float] | None) -> NDArray[np.str_]:
+    """Status words ``(B,)``: is there a resonance, inside the data and the window, and do the points resolve it?"""
+    circuit = model.circuit_of(fitted.parameters)
+    fs, q = circuit.f_hz[:, 0], circuit.q[:, 0]
+    low = np.where(fitted.weight > 0, data.f_hz, np.inf).min(axis=-1)
+    high = np.where(fitted.weight > 0, data.f_hz, -np.inf).max(axis=-1)
+    if window is not None:
+        low, high = np.maximum(low, window[0]), np.minimum(high, window[1])
+    noise2 = fitted.scale**2
+    bare = capacitor_cost(data, fitted.weight)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        gain = (bare - fitted.cost) / np.maximum(noise2, 1e-24)
+        inside = (fs >= low) & (fs <= high)
+        sound = inside & (gain > SIGNIFICANT) & (q > 1.5) & (np.abs(circuit.theta_rad[:, 0]) < 1.2)
+        sound &= np.isfinite(fitted.cost) & _turns(data, fitted.weight)
+        near = np.abs(q[:, None] * (data.f_hz / fs[:, None] - fs[:, None] / data.f_hz)) <= _HALF_POWER_WIDTHS
+    points = (near & (fitted.weight > 0)).sum(axis=-1)
+    u_ln_f, u_ln_q, u_ln_g = (np.sqrt(fitted.covariance[:, k, k]) for k in (2, 3, 4))
+    clear = (u_ln_f * q < 0.25) & (u_ln_q < 0.35) & (u_ln_g < 0.35) & fitted.converged
+    words = np.where(sound, np.where(clear & (points >= _LEAST_POINTS), "ok", "not-resolved"), "no-resonance")
+    return words.astype("<U13")
+
+
+def _turns(data: Data, weight: Floats) -> NDArray[np.bool_]:
+    """A piezo element is capacitive off resonance: somewhere the reactance must be negative. A coil's never is."""
+    return np.asarray(((data.x_ohm < 0) & (weight > 0)).sum(axis=-1) >= 2)
+
+
+def capacitor_cost(data: Data, weight: Floats) -> Floats:
+    """Misfit² ``(B,)`` of a bare lossy capacitance, Y = jωC(1 − j tan δ), relative weights by the measured |Z|.
+
+    Linear in 1/C and its loss: Z = (A − jB)/ω, weighted by 1/|Z|, each a mean.
+    """
+    omega = 2 * np.pi * data.f_hz
+    size2 = data.r_ohm**2 + data.x_ohm**2
+    sigma2 = np.where(size2 > 0, size2, 1.0) if data.sigma_ohm is None else data.sigma_ohm**2
+    w = weight / sigma2
+    base = (w / omega**2).sum(axis=-1)
+    a = (w * data.r_ohm / omega).sum(axis=-1) / base
+    b = (w * data.x_ohm / omega).sum(axis=-1) / base
+    left = (data.r_ohm - a[:, None] / omega) ** 2 + (data.x_ohm - b[:, None] / omega) ** 2
+    return np.asarray((w * left).sum(axis=-1))

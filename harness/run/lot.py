@@ -1,0 +1,188 @@
+"""The loop over a lot: part in, serial, tries, verdict out, and when to stop."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Generator, Iterator
+from dataclasses import dataclass
+
+from harness.bench import Bench, BenchFault
+from harness.errors import StationError
+from harness.records import Record, Verdict
+from harness.run.events import BenchTrouble, Ended, Event, Interrupted, Ready, Refused, Waiting
+from harness.run.part import Job, attempt
+from harness.run.serials import Serial, SerialSource, Wait, pattern_fault
+from harness.run.watch import LotWatch
+from harness.station import Station
+from harness.store import Store
+
+_TURN_S = 0.5  # how long one wait lasts before the loop looks whether it is to stop
+_SCAN_S = 10.0  # how long a part brought by the handler may wait for its code
+_REOPENINGS = 3
+
+
+@dataclass(slots=True)
+class _Tally:
+    judged: int = 0
+    refused: int = 0
+    held: bool = False
+
+
+def screen_lot(
+    station: Station, job: Job, source: SerialSource, stopping: Callable[[], bool] = lambda: False
+) -> Iterator[Event]:
+    """Screen parts until the source or the handler has no more, the lot must be held, or ``stopping`` says so.
+
+    Raises SetupError when the lot exists under other limits, StationError when the bench cannot be reopened.
+    """
+    store, bench = station.store, station.bench
+    for written in store.close_interrupted(job.clock(), job.software):
+        yield Interrupted(written)
+    lot = store.open_lot(job.lot, job.limits, job.operator, job.clock())
+    yield Ready(station.name, job.lot, lot.records, source.prompt)
+    tally, watch = _Tally(), LotWatch(job.limits.lot)
+    for serial in _serials(bench, store, job, source, stopping, tally):
+        if isinstance(serial, Serial):
+            record = yield from _tries(bench, store, job, serial)
+            tally.judged += 1
+            _signal_final(bench, record)
+            held = watch.see(record)
+            if held is not None:
+                tally.held = True
+                yield held
+                break
+        else:
+            yield serial
+    yield Ended(tally.judged, tally.refused, tally.held)
+
+
+def _serials(
+    bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool], tally: _Tally
+) -> Iterator[Serial | Event]:
+    """Serials of parts that sit in the fixture and may be measured; events for everything else."""
+    one = _ahead if source.ahead else _after
+    while not stopping():
+        found = yield from one(bench, store, job, source, stopping)
+        if found is Wait.END:
+            return
+        if isinstance(found, Refused):
+            tally.refused += 1
+        if not isinstance(found, Wait):
+            yield found
+
+
+def _ahead(
+    bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool]
+) -> Generator[Event, None, Serial | Refused | Wait]:
+    """The serial is known first; its part is asked for only if it may be measured."""
+    serial = source.next(_TURN_S)
+    if isinstance(serial, Wait):
+        return serial
+    refusal = _refusal(store, job, serial)
+    if refusal is not None:
+        return refusal
+    there = yield from _part(bench, stopping)
+    if there:
+        return serial
+    return Wait.END if stopping() else Refused(serial.text, "the handler has no more parts; this serial was not measured.")
+
+
+def _after(
+    bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool]
+) -> Generator[Event, None, Serial | Refused | Wait]:
+    """The part comes first, then its code."""
+    there = yield from _part(bench, stopping)
+    if not there:
+        return Wait.END
+    serial = yield from _code(bench, source, stopping)
+    if serial is Wait.END:
+        return serial
+    refusal = (
+        _refusal(store, job, serial)
+        if isinstance(serial, Serial)
+        else Refused("", f"no code was read within {_SCAN_S:g} s; the part goes to hold.")
+    )
+    if refusal is None:
+        return serial
+    bench.signal("hold", None)
+    return refusal
+
+
+def _part(bench: Bench, stopping: Callable[[], bool]) -> Generator[Event, None, bool]:
+    """Wait for the handler to bring a part (True), or to have no more (False), by return."""
+    told = False
+    while not stopping():
+        answer = bench.next_part(_TURN_S)
+        if answer is not None:
+            return answer
+        if not told:
+            told = True
+            yield Waiting("Waiting for the handler to bring a part.")
+    return False
+
+
+def _code(bench: Bench, source: SerialSource, stopping: Callable[[], bool]) -> Generator[Event, None, Serial | Wait]:
+    """The serial of the part in the fixture, by return; NOT_YET when a handler's part had no code in time."""
+    turns = 0
+    while not stopping():
+        serial = source.next(_TURN_S)
+        if serial is not Wait.NOT_YET:
+            return serial
+        turns += 1
+        if bench.has_handler and turns * _TURN_S >= _SCAN_S:
+            return Wait.NOT_YET
+        if turns == 1:
+            yield Waiting(source.prompt)
+    return Wait.END
+
+
+def _refusal(store: Store, job: Job, serial: Serial) -> Refused | None:
+    """Why this serial is not measured now: its form, or a verdict that stands (only a no verdict is repeated)."""
+    fault = pattern_fault(serial.text, job.limits.serial_pattern if serial.identity != "auto" else None)
+    if fault is not None:
+        return Refused(serial.text, fault)
+    standing = store.standing(job.lot, serial.text, job.conditions.element)
+    if standing is not None and standing.verdict is not Verdict.NONE:
+        return Refused(
+            serial.text,
+            f"already judged in this lot: {standing.verdict.value} at {standing.at}. A verdict stands; "
+            "set the part aside and check for a double label.",
+        )
+    return None
+
+
+def _tries(bench: Bench, store: Store, job: Job, serial: Serial) -> Generator[Event, None, Record]:
+    """As many attempts as the limit file allows while there is no verdict; the final record, by return."""
+    tries = job.limits.measurement.attempts
+    for k in range(1, tries + 1):
+        number = store.next_number(job.lot, serial.text, job.conditions.element)
+        record = yield from attempt(bench, store, job, serial.text, serial.identity, number, k == tries)
+        if record.sweep is None:
+            yield from _reopen(bench)
+        if record.final:
+            break
+        bench.signal("again", None)
+    return record
+
+
+def _reopen(bench: Bench) -> Iterator[Event]:
+    """After a fault the old connection is not to be trusted: connect and identify anew, three times at most."""
+    for k in range(1, _REOPENINGS + 1):
+        try:
+            bench.reopen()
+        except BenchFault as fault:
+            yield BenchTrouble(f"Reopening the bench, try {k} of {_REOPENINGS}: {fault.sentence()}")
+            last = fault
+        else:
+            yield BenchTrouble("The bench was reopened.")
+            return
+    raise StationError(
+        f"the bench could not be reopened in {_REOPENINGS} tries; the last one said: {last.text}",
+        place=last.place,
+        remedy="Every attempt so far is recorded. Check the instrument and its cable, then start this lot again.",
+    ) from last
+
+
+def _signal_final(bench: Bench, record: Record) -> None:
+    """Tell the handler, after the record is durable: pass with its grade, fail, or hold."""
+    outcome = {Verdict.PASS: "pass", Verdict.FAIL: "fail", Verdict.NONE: "hold"}[record.judgement.verdict]
+    bench.signal(outcome, record.judgement.grade)
