@@ -15,7 +15,6 @@ from harness.characteristics import CHARACTERISTICS
 from harness.correction import fixture
 from harness.fitting import model, single, values
 from harness.fitting.single import Choice, SingleFit
-from harness.judging import application
 from harness.judging.judge import judge
 from harness.records import (
     Caveat,
@@ -44,11 +43,17 @@ def analyse(sweep: Sweep, limits: LimitSet, correction: Correction = NO_FIXTURE)
     choice = Choice(mode.search_hz, branches=mode.branches, span=mode.span)
     fit = _fit(sweep, correction, choice, values.Wanted(mode.kind, mode.poisson))
     if fit.status is FitStatus.OK:
-        low = _low_frequency(sweep, correction, _at_hz(limits))
-        figures, told = application.figures(fit.values, limits.application)
-        fit = replace(fit, values={**fit.values, **low, **figures}, caveats=(*fit.caveats, *told))
+        fit = replace(fit, values={**fit.values, **_low_frequency(sweep, correction, _at_hz(limits))})
+    readings = tuple(_corrected(reading, correction) for reading in sweep.readings)
     first = None if sweep.z_ohm.size == 0 else Reading("first", float(sweep.f_hz[0]), complex(sweep.z_ohm[0]))
-    judgement = judge(fit, limits, sweep.conditions, sweep.readings, first=first, noise_relative=sweep.noise_relative)
+    judgement = judge(
+        fit,
+        limits,
+        sweep.conditions,
+        readings,
+        first=None if first is None else _corrected(first, correction),
+        noise_relative=sweep.noise_relative,
+    )
     return fit, judgement
 
 
@@ -154,15 +159,20 @@ def _low_frequency(sweep: Sweep, correction: Correction, at_hz: float | None) ->
     ]  # fmt: skip
     if not near:
         return {}
-    reading = near[0]
-    z = complex(fixture.correct(np.array([reading.f_hz]), np.array([reading.z_ohm]), correction)[0])
-    y = 1 / z
+    reading = _corrected(near[0], correction)
+    y = 1 / reading.z_ohm
     c = y.imag / (2 * np.pi * reading.f_hz)
     loss = y.real / y.imag
     # the stray capacitance is taken off C one for one
     relative = np.hypot(sweep.u_z_relative, sweep.noise_relative or 0.0)
     u_c = float(np.hypot(abs(c) * relative, correction.u_cp_f))
     return {"c_at": Value(float(c), u_c, "F"), "tan_delta_at": Value(float(loss), float(relative), "1")}
+
+
+def _corrected(reading: Reading, correction: Correction) -> Reading:
+    """A reading at the part's electrodes."""
+    z = fixture.correct(np.array([reading.f_hz]), np.array([reading.z_ohm]), correction)
+    return replace(reading, z_ohm=complex(z[0]))
 
 
 def _shape_only(numbers: dict[str, Value]) -> tuple[dict[str, Value], Caveat]:

@@ -12,7 +12,7 @@ half-block                TRACe? IMP        the first half of the answer, withou
 wrong-count               TRACe? IMP        one point fewer than asked, otherwise sound
 garbage                   any query         bytes that mean nothing, as many as the answer had
 nan, infinity             TRACe? IMP        every seventh number reads 9.91E37 or 9.9E37
-error-in-queue            any command       −240 "Hardware error" in the error queue
+error-in-queue            a sweep           −240 "Hardware error" in the error queue, the readings look right
 wrong-identity            *IDN?             another maker's instrument answers
 frequency-not-accepted    LIST:FREQuency    the middle frequency is taken 0.1 % higher, and read back so
 drop-connection           any command       the connection is closed without an answer
@@ -41,7 +41,7 @@ TARGETS = {
     "garbage": "query",
     "nan": "readings",
     "infinity": "readings",
-    "error-in-queue": "command",
+    "error-in-queue": "sweep",
     "wrong-identity": "identity",
     "frequency-not-accepted": "list",
     "drop-connection": "command",

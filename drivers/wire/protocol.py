@@ -27,7 +27,7 @@ class Wire(Protocol):
         ...
 
     def read_line(self, timeout_s: float) -> bytes:
-        """The bytes up to the next line end (or, on message-based wires, the message's end), without it."""
+        """The bytes up to the next line end, without it; NoAnswer when the line end is missing."""
         ...
 
     def read_exactly(self, count: int, timeout_s: float) -> bytes:

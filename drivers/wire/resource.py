@@ -26,7 +26,7 @@ _PATTERNS = tuple(
     for kind, pattern in (
         ("socket", r"TCPIP\d*::(?P<host>[^:\s,]+|\[[^\]\s]+\])::(?P<port>\d{1,5})::SOCKET"),
         ("hislip", r"TCPIP\d*::(?P<host>[^:\s,]+)::hislip\d+(,(?P<port>\d{1,5}))?(::INSTR)?"),
-        ("visa", r"TCPIP\d*::(?P<host>[^:\s,]+)(,(?P<port>\d{1,5}))?(::[A-Za-z]\w*)?(::INSTR)?"),
+        ("visa", r"TCPIP\d*::(?P<host>[^:\s,]+)(,(?P<port>\d{1,5}))?(::(inst\d+|gpib\d+(,\d+)*))?(::INSTR)?"),
         ("visa", r"USB\d*(::[^:\s]+){3,4}(::INSTR)?"),
         ("visa", r"GPIB\d*(::\d{1,2}){1,2}(::INSTR)?"),
     )

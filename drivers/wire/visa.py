@@ -68,7 +68,11 @@ class VisaWire:
     def read_line(self, timeout_s: float) -> bytes:
         with self._translated():
             self._fetch(timeout_s)
-        end = self._held.find(b"\n") + 1 or len(self._held)
+            end = self._held.find(b"\n") + 1
+            if not end:  # without it, nobody can tell a whole last number from one cut short
+                raise NoAnswer(
+                    f"the answer ended without its line end, after {shown(self._held)}.", resource=self._resource
+                )
         return self._take(end).rstrip(b"\r\n")
 
     def read_exactly(self, count: int, timeout_s: float) -> bytes:

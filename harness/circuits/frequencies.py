@@ -117,8 +117,9 @@ def figure_of_merit(circuit: Circuit) -> Floats:
 
 
 def level_ohm(circuit: Circuit, f_hz: Floats) -> Floats:
-    """|Z| at one frequency a circuit, ohm, shape ``S``."""
-    return np.asarray(np.abs(_impedance_at(circuit, f_hz)))
+    """|Z| at one frequency a circuit, ohm, shape ``S``; NaN where the frequency is."""
+    with np.errstate(invalid="ignore"):
+        return np.asarray(np.abs(_impedance_at(circuit, f_hz)))
 
 
 def _impedance_at(circuit: Circuit, f_hz: Floats) -> Complexes:

@@ -36,7 +36,8 @@ def _ready(event: e.Ready) -> str:
 
 def _ended(event: e.Ended) -> str:
     refused = f", {event.refused} not measured" if event.refused else ""
-    return f"End: {event.judged} parts judged{refused}."
+    note = f" {event.note}" if event.note else ""
+    return f"End: {event.judged} parts judged{refused}.{note}"
 
 
 def attempt_block(record: Record, limits: LimitSet) -> RenderableType:

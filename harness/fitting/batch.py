@@ -16,7 +16,7 @@ from harness.fitting import model, start, trial
 from harness.fitting.model import Data
 from harness.records import Floats
 
-CHUNK = 4096  # rows at a time: bounds memory, and changes no bit
+CHUNK = 64  # rows at a time: bounds memory, and changes no bit
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -72,10 +72,9 @@ def parameters_of(circuit: Circuit) -> Floats:
 def misfit(parameters: Floats, data: Data) -> Floats:
     """Weighted misfit ``(B, 2N)``: real parts, then imaginary parts of (Z_model − Z)/σ, σ = |Z_model| if not given."""
     circuit = circuit_of(parameters)
-    a, b = admittance(circuit, data.f_hz)
-    rm, xm = impedance(circuit, a, b)
+    rm, xm = impedance(circuit, *admittance(circuit, data.f_hz))
     scale = _scale(data, rm, xm)
-    return np.concatenate([(rm - data.r_ohm) * scale, (xm - data.x_ohm) * scale], axis=-1)
+    return _joined((rm - data.r_ohm) * scale, (xm - data.x_ohm) * scale)
 
 
 def misfit_and_slopes(parameters: Floats, data: Data, free: tuple[int, ...]) -> tuple[Floats, list[Floats], Floats]:
@@ -85,74 +84,96 @@ def misfit_and_slopes(parameters: Floats, data: Data, free: tuple[int, ...]) -> 
     minimising over the weights would bring. dZ = −dY/Y².
     """
     circuit = circuit_of(parameters)
-    a, b = admittance(circuit, data.f_hz)
+    omega_c, branches = _parts(circuit, data.f_hz)
+    a, b = _total(circuit, omega_c, branches)
     rm, xm = impedance(circuit, a, b)
     scale = _scale(data, rm, xm)
-    value = np.concatenate([(rm - data.r_ohm) * scale, (xm - data.x_ohm) * scale], axis=-1)
-    # −1/Y² = −(a − jb)²/|Y|⁴
+    value = _joined((rm - data.r_ohm) * scale, (xm - data.x_ohm) * scale)
+    # −scale/Y² = −scale (a − jb)²/|Y|⁴
     square = a * a + b * b
     over = scale / (square * square)
-    turn_re, turn_im = (b * b - a * a) * over, 2 * a * b * over
-    slopes = []
-    for k in free:
-        if k == parameters.shape[-1] - 1:
-            slopes.append(np.concatenate([scale, np.zeros_like(scale)], axis=-1))
-            continue
-        da, db = _admittance_slope(circuit, data.f_hz, k)
-        slopes.append(np.concatenate([turn_re * da - turn_im * db, turn_re * db + turn_im * da], axis=-1))
-    return value, slopes, np.concatenate([scale, scale], axis=-1)
+    turn = (b * b - a * a) * over, 2 * a * b * over
+    slopes = _static_slopes(circuit, omega_c, turn)
+    for m, branch in enumerate(branches):
+        slopes |= _branch_slopes(circuit, data.f_hz, m, branch, turn)
+    slopes[parameters.shape[-1] - 1] = scale, np.zeros_like(scale)
+    return value, [_joined(*slopes[k]) for k in free], _joined(scale, scale)
+
+
+_Pair = tuple[Floats, Floats]  # real and imaginary part, each (B, N)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Branch:
+    """One branch at every point: conductance, susceptance, detuning q = Q(f/fm − fm/f) and 1/(1 + q²)."""
+
+    a: Floats
+    b: Floats
+    q: Floats
+    h: Floats
+
+
+def _joined(real: Floats, imaginary: Floats) -> Floats:
+    return np.concatenate([real, imaginary], axis=-1)
 
 
 def _scale(data: Data, rm: Floats, xm: Floats) -> Floats:
     if data.sigma_ohm is not None:
         return data.weight / data.sigma_ohm
-    return data.weight / np.sqrt(rm * rm + xm * xm)
+    return np.asarray(data.weight / np.sqrt(rm * rm + xm * xm))
 
 
-def impedance(circuit: Circuit, a: Floats, b: Floats) -> tuple[Floats, Floats]:
+def admittance(circuit: Circuit, f: Floats) -> _Pair:
+    """Conductance and susceptance without Rs, siemens, ``(B, N)``, in real arithmetic."""
+    return _total(circuit, *_parts(circuit, f))
+
+
+def impedance(circuit: Circuit, a: Floats, b: Floats) -> _Pair:
     """Resistance and reactance, ohm, ``(B, N)``, of an admittance a + jb behind the circuit's Rs."""
     square = a * a + b * b
     return circuit.rs_ohm[..., None] + a / square, -b / square
 
 
-def _branch(circuit: Circuit, f: Floats, m: int) -> tuple[Floats, Floats, Floats, Floats]:
-    """Conductance and susceptance of branch m, its detuning q = Q(f/fm − fm/f), and 1/(1 + q²)."""
+def _parts(circuit: Circuit, f: Floats) -> tuple[Floats, list[_Branch]]:
+    """ωC, and the branches."""
+    return 2 * np.pi * f * circuit.c_f[..., None], [_branch(circuit, f, m) for m in range(circuit.f_hz.shape[-1])]
+
+
+def _branch(circuit: Circuit, f: Floats, m: int) -> _Branch:
     fm, big_q = circuit.f_hz[..., m, None], circuit.q[..., m, None]
     theta = circuit.theta_rad[..., m, None]
     c, s = np.cos(theta), np.sin(theta)
     q = big_q * (f / fm - fm / f)
     h = 1 / (1 + q * q)
     g = circuit.g_s[..., m, None] * h
-    return g * (c + s * q), g * (s - c * q), q, h
+    return _Branch(g * (c + s * q), g * (s - c * q), q, h)
 
 
-def admittance(circuit: Circuit, f: Floats) -> tuple[Floats, Floats]:
-    """Conductance and susceptance without Rs, siemens, ``(B, N)``, in real arithmetic."""
-    omega_c = 2 * np.pi * f * circuit.c_f[..., None]
+def _total(circuit: Circuit, omega_c: Floats, branches: list[_Branch]) -> _Pair:
     a, b = omega_c * circuit.tan_delta[..., None], omega_c
-    for m in range(circuit.f_hz.shape[-1]):
-        am, bm, _, _ = _branch(circuit, f, m)
-        a, b = a + am, b + bm
+    for branch in branches:
+        a, b = a + branch.a, b + branch.b
     return a, b
 
 
-def _admittance_slope(circuit: Circuit, f: Floats, k: int) -> tuple[Floats, Floats]:
-    """Derivative of Y by parameter ``k`` (not Rs): real and imaginary part."""
-    if k in (LN_C, TAN_DELTA):
-        omega_c = 2 * np.pi * f * circuit.c_f[..., None]
-        if k == LN_C:
-            return omega_c * circuit.tan_delta[..., None], omega_c
-        return omega_c, np.zeros_like(omega_c)
-    m, kind = divmod(k - FIRST_BRANCH, BRANCH)
-    a, b, q, h = _branch(circuit, f, m)
-    if kind == LN_G:
-        return a, b
-    if kind == THETA:
-        return -b, a
-    if kind == LN_Q:  # −jq/(1 + jq) = −h(q² + jq)
-        real, imag = -h * q * q, -h * q
-    else:  # LN_F: jQv/(1 + jq) = Qvh(q + j), v = f/fm + fm/f
-        fm = circuit.f_hz[..., m, None]
-        qvh = circuit.q[..., m, None] * (f / fm + fm / f) * h
-        real, imag = qvh * q, qvh
-    return a * real - b * imag, a * imag + b * real
+def _static_slopes(circuit: Circuit, omega_c: Floats, turn: _Pair) -> dict[int, _Pair]:
+    """By tan δ: turn·ωC; by ln C: turn·ωC (tan δ + j)."""
+    real, imag = turn[0] * omega_c, turn[1] * omega_c
+    loss = circuit.tan_delta[..., None]
+    return {TAN_DELTA: (real, imag), LN_C: (loss * real - imag, loss * imag + real)}
+
+
+def _branch_slopes(circuit: Circuit, f: Floats, m: int, branch: _Branch, turn: _Pair) -> dict[int, _Pair]:
+    """With w = turn·Y_m and e = w h (q + j): by ln G w, by θ jw, by ln Q −qe, by ln f Q(f/fm + fm/f) e."""
+    at = FIRST_BRANCH + BRANCH * m
+    real = turn[0] * branch.a - turn[1] * branch.b
+    imag = turn[0] * branch.b + turn[1] * branch.a
+    e_real, e_imag = (real * branch.q - imag) * branch.h, (imag * branch.q + real) * branch.h
+    fm = circuit.f_hz[..., m, None]
+    qv = circuit.q[..., m, None] * (f / fm + fm / f)
+    return {
+        at + LN_G: (real, imag),
+        at + THETA: (-imag, real),
+        at + LN_Q: (-branch.q * e_real, -branch.q * e_imag),
+        at + LN_F: (qv * e_real, qv * e_imag),
+    }

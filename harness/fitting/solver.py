@@ -21,7 +21,8 @@ Evaluate = Callable[[Floats, Index], tuple[Floats, list[Floats], Floats]]
 weights (b, K) that are in both: they may depend on the parameters, and are held within a step."""
 
 _STEP_LIMIT = 1.0  # in natural units: no parameter moves by more than a factor e at once
-_POLISH = 3  # undamped steps at the end, onto the root of the likelihood's own equation
+_POLISH = 3  # undamped steps at the most at the end, onto the root of the likelihood's own equation
+_MEANT = 1e-4  # of the standard uncertainty: a smaller step is not worth another look
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -83,16 +84,18 @@ def solve(
 
 
 def _polish(evaluate: Evaluate, p: Floats, columns: list[int], converged: NDArray[np.bool_]) -> Solution:
-    everyone: Index = np.arange(len(p))
+    rows: Index = np.arange(len(p))
+    cost, gradient, normal = _normal(*evaluate(p, rows)[:2])
     for _ in range(_POLISH):
-        cost, gradient, normal = _normal(*evaluate(p, everyone)[:2])
-        step = _step(normal, gradient, np.zeros(len(p)))
-        # only a row that sits on its root already may be moved undamped
-        calm = converged & _is_small(step, cost, normal, 1.0)
-        moved = p.copy()
-        moved[:, columns] += step
-        p = np.where(calm[:, None], moved, p)
-    cost, _, normal = _normal(*evaluate(p, everyone)[:2])
+        step = _step(normal[rows], gradient[rows], np.zeros(len(rows)))
+        # only a row that sits on its root already may be moved undamped, and only while moving it means anything
+        calm = converged[rows] & _is_small(step, cost[rows], normal[rows], 1.0)
+        move = calm & ~_is_small(step, cost[rows], normal[rows], _MEANT)
+        rows = rows[move]
+        if rows.size == 0:
+            break
+        p[np.ix_(rows, columns)] += step[move]
+        cost[rows], gradient[rows], normal[rows] = _normal(*evaluate(p[rows], rows)[:2])
     return Solution(p, cost, normal, converged & np.isfinite(cost))
 
 
@@ -102,10 +105,9 @@ def covariance(normal: Floats) -> Floats:
     scale = np.where(scale > 0, scale, 1.0)
     scaled = normal / (scale[:, :, None] * scale[:, None, :])
     out = np.full_like(normal, np.nan)
-    for b in range(len(normal)):
-        sound = np.isfinite(scaled[b]).all()
-        if sound and np.linalg.matrix_rank(scaled[b], tol=1e-13, hermitian=True) == len(scaled[b]):
-            out[b] = np.linalg.inv(scaled[b])
+    sound = np.isfinite(scaled).all(axis=(1, 2))
+    sound[sound] = np.linalg.eigvalsh(scaled[sound])[:, 0] > 1e-13
+    out[sound] = np.linalg.inv(scaled[sound])
     return np.asarray(out / (scale[:, :, None] * scale[:, None, :]))
 
 

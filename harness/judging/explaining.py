@@ -136,11 +136,8 @@ def _rule(requirement: Requirement) -> str:
     if requirement.rule == "simple":
         return "accepted as measured, whatever the uncertainty"
     k, risk = coverage(requirement), 100 * requirement.max_false_accept
-    between = "fails" if requirement.between == "fail" else "gets no verdict and is held"
-    return (
-        f"accepted when inside by {k:.3g} u (at most {risk:g} % false accept), failed when outside by as much, "
-        f"and what lies between {between}"
-    )
+    between = "fails" if requirement.between == "fail" else "is held without a verdict"
+    return f"guarded by {k:.3g} u (at most {risk:g} % false accept); too close to prove {between}"
 
 
 def _zone(requirement: Requirement, u: float) -> str:

@@ -45,7 +45,7 @@ def search_window(kept: Tables) -> tuple[tuple[float, float] | None, list[Findin
             wrong.append(Finding(("mode", "search", index), f"{exc}.", 'Write ["1.50 MHz", "1.90 MHz"].'))
     if wrong:
         return None, wrong
-    if not 0 < found[0] < found[1] < math.inf:
+    if not 0 < found[0] < found[1] < 1e11:
         return None, [Finding(("mode", "search"), "does not rise from a lower to a higher frequency.")]
     return (found[0], found[1]), []
 
@@ -171,7 +171,7 @@ def _limits_in_window(kept: Tables) -> Iterator[Finding]:
         if block.get("characteristic") not in FREQUENCIES:
             continue
         for key, value in zip(("min", "max"), limits_si(block, "min", "max"), strict=True):
-            if value is not None and not window[0] < value < window[1]:
+            if value is not None and math.isfinite(value) and not window[0] < value < window[1]:
                 text = f"{group(f'{block[key]:g}')} {block['unit']} is not inside the search window of [mode]."
                 yield Finding((*path, key), text, "A part just outside its limits must still be found: widen search.")
 

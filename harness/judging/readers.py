@@ -126,14 +126,16 @@ def switch() -> Reader:
     return Reader(read, {"type": "boolean"})
 
 
-def quantity(dimension: str, *, above: float | None = None) -> Reader:
+def quantity(
+    dimension: str, *, above: float | None = None, least: float | None = None, below: float | None = None
+) -> Reader:
     """A number with its unit in quotes ("1.5 MHz"), returned in the SI unit ``dimension``."""
 
     def read(value: object) -> float:
         if isinstance(value, str):
-            return _bounded(_parsed(value, dimension), above, None, None)
+            return _bounded(_parsed(value, dimension), above, least, below)
         if isinstance(value, int | float) and not isinstance(value, bool):
-            return _bounded(_parsed(_short(value), dimension), above, None, None)
+            return _bounded(_parsed(_short(value), dimension), above, least, below)
         raise Unreadable(f"{_what(value)} stands where a number with a unit in quotes belongs.")
 
     return Reader(read, {"type": "string", "pattern": r"^\s*[-+]?[0-9.]+([eE][-+]?[0-9]+)?\s*\S+\s*$"})

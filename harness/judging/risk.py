@@ -61,7 +61,7 @@ def global_risk_normal(mean: ArrayLike, sd: ArrayLike, u: ArrayLike, tolerance: 
 
     def density(eta: Floats) -> Floats:
         z = (eta - mu[..., None]) / s[..., None]
-        return np.exp(-0.5 * z * z) / (np.sqrt(2 * np.pi) * s[..., None])
+        return np.asarray(np.exp(-0.5 * z * z) / (np.sqrt(2 * np.pi) * s[..., None]))
 
     breaks = mu[..., None] + s[..., None] * _PROCESS_BREAKS
     return _risks(density, (mu - _SPAN * s, mu + _SPAN * s), breaks, spread, tol, acc)

@@ -23,12 +23,12 @@ Positive = Annotated[float, r.number(above=0.0)]
 Small = Annotated[float, r.ratio(above=0.0, below=1.0)]
 Share = Annotated[float, r.ratio(least=0.0, below=1.0)]
 Risk = Annotated[float, r.ratio(above=0.0, below=0.5)]
-Relative = Annotated[float, r.ratio()]
-RelativeU = Annotated[float, r.ratio(least=0.0)]
-PerKelvin = Annotated[float, r.ratio(dimension="1/K")]
-PerKelvinU = Annotated[float, r.ratio(dimension="1/K", least=0.0)]
-Celsius = Annotated[float, r.quantity("degC")]
-Frequency = Annotated[float, r.quantity("Hz", above=0.0)]
+Relative = Annotated[float, r.ratio(least=-0.5, below=0.5)]
+RelativeU = Annotated[float, r.ratio(least=0.0, below=0.5)]
+PerKelvin = Annotated[float, r.ratio(dimension="1/K", least=-0.1, below=0.1)]
+PerKelvinU = Annotated[float, r.ratio(dimension="1/K", least=0.0, below=0.1)]
+Celsius = Annotated[float, r.quantity("degC", least=-273.15, below=1500.0)]
+Frequency = Annotated[float, r.quantity("Hz", above=0.0, below=1e11)]
 
 
 class Block(BaseModel):
@@ -69,7 +69,7 @@ class Contact(Block):
 class Measurement(Block):
     """How the part is measured."""
 
-    drive: Annotated[float, r.quantity("V", above=0.0)] = Field(
+    drive: Annotated[float, r.quantity("V", above=0.0, below=1e4)] = Field(
         default=1.0, description='Drive across the part, such as "1 V".'
     )
     attempts: Annotated[int, r.whole(1, 9)] = Field(
@@ -162,15 +162,21 @@ class Application(Block):
 
     board: Frequency | None = Field(default=None, description="Frequency at which the board drives the part.")
     board_tolerance: Share = Field(default=0.0, description="Greatest relative deviation of the board's frequency.")
-    loaded_q: Positive | None = Field(default=None, description="Quality factor of the part under its real load.")
-    loaded_shift: Annotated[float, r.ratio(below=1.0)] = Field(
+    loaded_q: Annotated[float, r.number(above=0.0, below=1e9)] | None = Field(
+        default=None, description="Quality factor of the part under its real load."
+    )
+    loaded_shift: Relative = Field(
         default=0.0, description="Relative change of fs from the measuring loading to the real load."
     )
     liquid: Name | None = Field(
         default=None, description="Name of the liquid; for water the two figures below are known."
     )
-    surface_tension_n_per_m: Positive | None = Field(default=None, description="Surface tension of the liquid, N/m.")
-    density_kg_per_m3: Positive | None = Field(default=None, description="Density of the liquid, kg/m³.")
+    surface_tension_n_per_m: Annotated[float, r.number(above=0.0, below=10.0)] | None = Field(
+        default=None, description="Surface tension of the liquid, N/m."
+    )
+    density_kg_per_m3: Annotated[float, r.number(least=1.0, below=1e5)] | None = Field(
+        default=None, description="Density of the liquid, kg/m³."
+    )
     mesh: Annotated[bool, r.switch()] = Field(
         default=False, description="true: the mesh's apertures set the droplet size."
     )

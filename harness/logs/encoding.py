@@ -21,8 +21,6 @@ def decode(data: bytes, mistakes: Mistakes) -> list[str]:
     if data.startswith(_UTF16_MARKS):
         mistakes.stop(None, "", "the file is UTF-16 or UTF-32 text, not UTF-8.", _SAVE_AS_UTF8)
     data = data.removeprefix(_UTF8_MARK)
-    if not data.strip():
-        mistakes.stop(None, "", "the file is empty.", "Export the sweep again.")
     zero = data.find(b"\0")
     if zero >= 0:
         mistakes.stop(_line_of(data, zero), "", "the file holds zero bytes: binary, or UTF-16 text.", _SAVE_AS_UTF8)
@@ -35,6 +33,8 @@ def decode(data: bytes, mistakes: Mistakes) -> list[str]:
             f"byte 0x{data[error.start]:02X} is not UTF-8 text (it may be Latin-1 or a Windows code page).",
             _SAVE_AS_UTF8,
         )
+    if not text.strip():
+        mistakes.stop(None, "", "the file is empty.", "Export the sweep again.")
     return _LINE_END.split(text)
 
 

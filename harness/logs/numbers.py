@@ -6,7 +6,7 @@ import math
 import re
 
 # Strict on purpose: float() also takes "1_000", "infinity" and digits of other scripts.
-_NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
+_NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,6})?")
 _COMMA_NUMBER = re.compile(r"[+-]?[0-9]+(?:,[0-9]+)+(?:[eE][+-]?[0-9]+)?")
 _NOT_FINITE = re.compile(r"[+-]?(?:nan|inf|infinity|1\.#\w+|#n/?a|n/?a)", re.IGNORECASE)
 

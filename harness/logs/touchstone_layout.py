@@ -42,15 +42,17 @@ class Layout:
 
 
 def read_options(text: str, line: int, mistakes: Mistakes) -> Options:
-    """An option line: unit, parameter, format and ``R n`` in any order and case, each at most once."""
+    """An option line: unit, parameter, format and ``R n`` in any order and case, each at most once.
+
+    One reference a port may be given, but they have to be the same.
+    """
     chosen: dict[str, Any] = {}
-    words = iter(text.lstrip("#").lower().split())
-    for word in words:
+    words = text.lstrip("#").lower().split()
+    while words:
+        word = words.pop(0)
         field, value = _option(word)
         if field == "r_ohm":
-            value = read_number(next(words, ""))
-            if value is None or value <= 0:
-                mistakes.add(line, "#", "R is not followed by a resistance above zero.", _OPTION_REMEDY)
+            value = _reference(words, line, mistakes)
         if not field:
             mistakes.add(line, "#", f"'{word[:24]}' is no option of a Touchstone file.", _OPTION_REMEDY)
         elif field in chosen:
@@ -58,6 +60,20 @@ def read_options(text: str, line: int, mistakes: Mistakes) -> Options:
         else:
             chosen[field] = value
     return Options(**chosen)
+
+
+def _reference(words: list[str], line: int, mistakes: Mistakes) -> float:
+    """Take the resistances off the front of ``words``; the one they agree on."""
+    found: list[float] = []
+    while words and (r := read_number(words[0])) is not None:
+        found.append(r)
+        words.pop(0)
+    if not found or min(found) <= 0:
+        mistakes.add(line, "#", "R is not followed by a resistance above zero.", _OPTION_REMEDY)
+        return 1.0
+    if len(set(found)) > 1:
+        mistakes.add(line, "#", "the ports have different references.", "Renormalise both ports to the same one.")
+    return found[0]
 
 
 def looks_like_options(text: str) -> bool:

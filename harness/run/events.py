@@ -80,11 +80,12 @@ class Held:
 
 @dataclass(frozen=True, slots=True)
 class Ended:
-    """No more parts; ``judged`` counts those with a final verdict in this run, ``refused`` the serials not measured."""
+    """No more parts; ``judged`` counts those with a final record in this run, ``refused`` the serials not measured;
+    ``note`` says so when the yield fell short of the lot's least."""
 
     judged: int
     refused: int
-    held: bool
+    note: str
 
 
 Event = Ready | Interrupted | Waiting | Refused | Opened | Measuring | Recorded | BenchTrouble | Held | Ended

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Generator, Iterator
-from dataclasses import dataclass
 
 from harness.bench import Bench, BenchFault
 from harness.errors import StationError
+from harness.judging.requirements import refuse_empty_zones
+from harness.planning.expected import least_u
 from harness.records import Record, Verdict
 from harness.run.events import BenchTrouble, Ended, Event, Interrupted, Ready, Refused, Waiting
 from harness.run.part import Job, attempt
@@ -20,43 +21,37 @@ _SCAN_S = 10.0  # how long a part brought by the handler may wait for its code
 _REOPENINGS = 3
 
 
-@dataclass(slots=True)
-class _Tally:
-    judged: int = 0
-    refused: int = 0
-    held: bool = False
-
-
 def screen_lot(
     station: Station, job: Job, source: SerialSource, stopping: Callable[[], bool] = lambda: False
 ) -> Iterator[Event]:
     """Screen parts until the source or the handler has no more, the lot must be held, or ``stopping`` says so.
 
-    Raises SetupError when the lot exists under other limits, StationError when the bench cannot be reopened.
+    Raises SetupError when the lot exists under other limits or no part could pass a requirement at this station's
+    uncertainty, StationError when the bench cannot be reopened.
     """
     store, bench = station.store, station.bench
+    refuse_empty_zones(job.limits, least_u(job.limits, bench.instrument, job.conditions))
     for written in store.close_interrupted(job.clock(), job.software):
         yield Interrupted(written)
     lot = store.open_lot(job.lot, job.limits, job.operator, job.clock())
     yield Ready(station.name, job.lot, lot.records, source.prompt)
-    tally, watch = _Tally(), LotWatch(job.limits.lot)
-    for serial in _serials(bench, store, job, source, stopping, tally):
-        if isinstance(serial, Serial):
-            record = yield from _tries(bench, store, job, serial)
-            tally.judged += 1
-            _signal_final(bench, record)
-            held = watch.see(record)
-            if held is not None:
-                tally.held = True
-                yield held
-                break
-        else:
-            yield serial
-    yield Ended(tally.judged, tally.refused, tally.held)
+    watch, refused = LotWatch(job.limits.lot), 0
+    for found in _serials(bench, store, job, source, stopping):
+        if not isinstance(found, Serial):
+            refused += isinstance(found, Refused)
+            yield found
+            continue
+        record = yield from _tries(bench, store, job, found)
+        _signal_final(bench, record)
+        held = watch.see(record)
+        if held is not None:
+            yield held
+            break
+    yield Ended(watch.judged, refused, watch.short_of_yield())
 
 
 def _serials(
-    bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool], tally: _Tally
+    bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool]
 ) -> Iterator[Serial | Event]:
     """Serials of parts that sit in the fixture and may be measured; events for everything else."""
     one = _ahead if source.ahead else _after
@@ -64,8 +59,6 @@ def _serials(
         found = yield from one(bench, store, job, source, stopping)
         if found is Wait.END:
             return
-        if isinstance(found, Refused):
-            tally.refused += 1
         if not isinstance(found, Wait):
             yield found
 

@@ -2,14 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 from harness.characteristics import CHARACTERISTICS
 from harness.records import LotSpec, Record, Verdict
 from harness.run.events import Held
-from harness.statistics.yields import wilson
-
-_LEAST_PARTS = 10  # before a yield is held against its minimum
 
 # what a practitioner would look at first; common practice, no source
 _CAUSES = {
@@ -42,7 +39,7 @@ class LotWatch:
     judged: int = 0
     _key: tuple[str, str] | None = None
     _same: int = 0
-    _unjudged: int = field(default=0)
+    _unjudged: int = 0
 
     def see(self, record: Record) -> Held | None:
         """Take one final record into account; a ``Held`` when a rule of the lot is met."""
@@ -66,12 +63,18 @@ class LotWatch:
             where = f" {self._key[1]} its limit" if self._key[1] else ""
             cause = _CAUSES.get(self._key, "the process before this station, or the station itself")
             return Held(f"{self._same} parts in a row failed for the same reason: {name}{where}. Likely cause: {cause}. {_ASK}")
-        if spec.min_yield is not None and self.judged >= _LEAST_PARTS:
-            _, high = wilson(self.passed, self.judged)
-            if high < spec.min_yield:
-                share = 100 * self.passed / self.judged
-                return Held(f"Only {share:.0f} % of {self.judged} parts passed, least yield {100 * spec.min_yield:g} %. {_ASK}")
         return None
+
+    def short_of_yield(self) -> str:
+        """A sentence when the parts judged fell short of the lot's least yield, else ""."""
+        least = self.spec.min_yield
+        if least is None or not self.judged or self.passed >= least * self.judged:
+            return ""
+        share = 100 * self.passed / self.judged
+        return (
+            f"{share:.0f} % of {self.judged} parts passed, below the least yield of {100 * least:g} %: "
+            "ask a quality engineer before the lot moves on."
+        )
 
 
 _ASK = "Measure a reference part before going on; then start this lot again."

@@ -96,6 +96,12 @@ def _look(path: Path, place: str) -> int | None:
         return None
     if head != _MAGIC:
         raise SetupError(f"{place} is not a ringtrue store.", remedy=_GIVE_ANOTHER)
+    journal = path.with_name(f"{path.name}-journal")
+    if journal.exists() and journal.stat().st_size:
+        raise SetupError(
+            f"a change to {place} was never finished ({journal.name} lies beside it), which no ringtrue store ever has.",
+            remedy=_GIVE_ANOTHER,
+        )
     return _version(path, place)
 
 
@@ -123,20 +129,40 @@ def _version(path: Path, place: str) -> int | None:
 
 
 def _create(path: Path, place: str, made_by: str, now: str) -> None:
-    """File, tables and guards, in one transaction: a killed creation leaves an empty file that the next one fills."""
+    """Make the store beside its place and give it its name at the end, so that a killed creation leaves no half store."""
     made = [folder for folder in (path.parent, *path.parent.parents) if not folder.exists()]
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
     except OSError as exc:
-        raise StationError(
-            f"the folder {path.parent} cannot be made: {exc.strerror}",
-            place=place,
-            remedy="Give another path with --store.",
-        ) from exc
+        sentence = f"the folder {path.parent} cannot be made: {exc.strerror}."
+        raise StationError(sentence, place=place, remedy=_GIVE_ANOTHER) from exc
+    if path.exists():
+        _fill(path, place, made_by, now)
+    else:
+        _fill_and_name(path, place, made_by, now)
+    for folder in {path.parent, *(one.parent for one in made)}:
+        _flush_folder(folder)
+
+
+def _fill_and_name(path: Path, place: str, made_by: str, now: str) -> None:
+    beside = path.with_name(f".{path.name}.{uuid.uuid4().hex}")
+    try:
+        _fill(beside, place, made_by, now)
+        os.link(beside, path)
+    except FileExistsError:
+        pass  # another process was first, and its store is as good
+    except OSError:
+        _fill(path, place, made_by, now)  # a file system without hard links
+    finally:
+        beside.unlink(missing_ok=True)
+
+
+def _fill(path: Path, place: str, made_by: str, now: str) -> None:
+    """Tables and guards in one transaction, into a file that has none yet."""
     engine = engines.sqlite_engine(path, "write")
     try:
         with engines.translated(place), engine.begin() as connection:
-            # Another process may have created it between the look and this transaction.
+            # Another process may have filled it between the look and this transaction.
             if connection.exec_driver_sql("SELECT count(*) FROM sqlite_master").scalar_one() == 0:
                 connection.exec_driver_sql(f"PRAGMA application_id = {APPLICATION_ID}")
                 metadata.create_all(connection, checkfirst=False)
@@ -147,8 +173,6 @@ def _create(path: Path, place: str, made_by: str, now: str) -> None:
                 connection.execute(insert(store_info), row)
     finally:
         engine.dispose()
-    for folder in {path.parent, *(one.parent for one in made)}:
-        _flush_folder(folder)
 
 
 def _flush_folder(folder: Path) -> None:

@@ -113,8 +113,7 @@ record = Table(
     Column("hash", Text, nullable=False),
     Column("prev_hash", Text, nullable=False),
     Column("attempt_id", I64, ForeignKey(attempt.c.id), nullable=False, unique=True),
-    Column("document", Text, nullable=False),
-    # from here on: repeated from the document
+    # from here on repeated from the document, which stands last: what follows it would be slow to reach
     Column("lot", Text, ForeignKey(lot.c.id), nullable=False),
     Column("serial", Text, nullable=False),
     Column("element", I64, nullable=False),
@@ -125,11 +124,12 @@ record = Table(
     Column("at", Text, nullable=False),
     Column("sweep_sha256", Text, ForeignKey(sweep.c.sha256)),
     Column("points", I64, nullable=False),
+    Column("document", Text, nullable=False),
     CheckConstraint("verdict in ('pass', 'fail', 'no verdict')", name="verdict"),
     CheckConstraint("final in (0, 1)", name="final"),
     UniqueConstraint("chain", "seq"),
-    Index(None, "lot", "seq"),
-    Index(None, "serial", "seq"),
+    Index(None, "lot", "id"),
+    Index(None, "serial", "id"),
     sqlite_strict=True,
     sqlite_autoincrement=True,
 )

@@ -63,7 +63,7 @@ def _modes_of(element: Element, part: Part, state: State) -> list[Mode]:
     y = element.admittance(f, state)
     g = y.real
     peaks = np.flatnonzero((g[1:-1] > g[:-2]) & (g[1:-1] >= g[2:])) + 1
-    starts = [f[k] + _pole_through((f - f[k])[k - 1 : k + 2].astype(complex), y[k - 1 : k + 2]) for k in peaks]
+    starts = [f[k] + _pole_through((f - f[k])[k - 1 : k + 2].astype(complex), (y / f)[k - 1 : k + 2]) for k in peaks]
     poles = [_refined(element, start, 0.1 * start.imag, state) for start in starts if start.imag > 0]
     return [_mode(element, pole, state) for pole in poles if low <= abs(pole) <= high and pole.imag > 0]
 
@@ -76,20 +76,24 @@ def _mode(element: Element, pole: complex, state: State) -> Mode:
     amplitude = residue * 1j * q * (1 / f0 + f0 / pole**2)
     # losses move a pole off the real axis, and along it by O(1/Q²) only
     bare = _refined(element, complex(f0), radius, State(state.temperature_degc, lossless=True))
-    return Mode(pole, amplitude, bare.real)
+    return Mode(complex(pole), complex(amplitude), float(bare.real))
 
 
 def _refined(element: Element, start: complex, radius_hz: float, state: State) -> complex:
-    """The pole next to ``start``: the pole of c + r/(f − p) through three points around it, ever closer."""
+    """The pole next to ``start``: the pole of c + r/(f − p) through three points around it, ever closer.
+
+    Taken of Y/f, a capacitance, whose rest is nearly constant.
+    """
     pole = start
     for shrink in _SHRINK:
-        f = _TRIANGLE * (radius_hz * shrink)
-        pole += _pole_through(f, element.admittance(pole + f, state))
+        f = pole + _TRIANGLE * (radius_hz * shrink)
+        pole += _pole_through(f - pole, element.admittance(f, state) / f)
     return pole
 
 
 def _pole_through(f: Complexes, y: Complexes) -> complex:
     """p of y = c + r/(f − p) through three points: linear in (p, c, r − cp), y f = p y + c f + (r − cp)."""
+    y = y - y.mean()  # a large constant would hide a weak mode
     a = np.stack([y, f, np.ones_like(y)], axis=1)
     scale = np.abs(a).max(axis=0)
     return complex(np.linalg.solve(a / scale, y * f)[0] / scale[0])

@@ -5,6 +5,7 @@ from __future__ import annotations
 import itertools
 import math
 import struct
+from collections.abc import Callable
 
 import numpy as np
 import pytest
@@ -281,7 +282,7 @@ def test_serials() -> None:
             lines.decode_serial(wrong)
 
 
-DECODERS = [
+DECODERS: list[Callable[[bytes], object]] = [
     lambda data: block.decode_block(data),
     lambda data: block.decode_numbers(data),
     lambda data: block.decode_numbers(data, "float32", "little"),

@@ -22,8 +22,20 @@ GOOD = [
     ("GPIB0::17::INSTR", "visa", "", None),
     (" GPIB::17 ", "visa", "", None),
 ]
-BAD = ["", "meter", "127.0.0.1:5025", "TCPIP::host::SOCKET", "TCPIP::::5025::SOCKET", "TCPIP::host::port::SOCKET",
-       "/dev/ttyUSB0", "ASRL1::INSTR", "GPIB::INSTR", "TCPIP::a b::5025::SOCKET", "USB::1::INSTR", "TCPIP::h::5025::SOCKET\n;"]  # fmt: skip
+BAD = [
+    "",
+    "meter",
+    "127.0.0.1:5025",
+    "TCPIP::host::SOCKET",
+    "TCPIP::::5025::SOCKET",
+    "TCPIP::host::port::SOCKET",
+    "TCPIP::a b::5025::SOCKET",
+    "TCPIP::h::5025::SOCKET\n;",
+    "/dev/ttyUSB0",
+    "ASRL1::INSTR",
+    "GPIB::INSTR",
+    "USB::1::INSTR",
+]
 
 
 @pytest.mark.parametrize(("text", "kind", "host", "port"), GOOD)

@@ -8,7 +8,6 @@ import os
 import select
 import socket
 import threading
-import time
 from collections.abc import Callable, Iterator, Sequence
 from typing import Any
 
@@ -172,16 +171,3 @@ def descriptors() -> Callable[[], set[str]]:
         return found
 
     return opened
-
-
-@pytest.fixture
-def until() -> Callable[[Callable[[], bool]], None]:
-    """Wait for a state that another thread or process brings about; fails after five seconds."""
-
-    def wait(reached: Callable[[], bool]) -> None:
-        deadline = time.monotonic() + 5
-        while not reached():
-            assert time.monotonic() < deadline, "the awaited state never came"
-            time.sleep(0.005)
-
-    return wait

@@ -80,9 +80,12 @@ def test_garbage_is_no_response(bench: Bench) -> None:
 
 
 def test_error_in_queue_waits_to_be_read(bench: Bench) -> None:
-    """The answers look right; the queue says that they are not."""
-    analyser, (_, complete, _) = talked(bench, Fault("error-in-queue", sweep=1))
-    assert complete.data == b"1\n"
+    """The answers look right; the queue says that they are not, and clearing before the sweep does not help."""
+    bench.feed()
+    analyser = Analyser(bench, faults=FaultBook([Fault("error-in-queue")]))
+    analyser.respond(b"*CLS")
+    assert analyser.respond(b"INIT;*OPC?") == b"1\n"
+    assert analyser.respond(b"TRAC? IMP").count(b",") == 1
     assert analyser.respond(b"SYST:ERR?;ERR?") == b'-240,"Hardware error";0,"No error"\n'
 
 

@@ -6,7 +6,7 @@ import struct
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from sim_instruments import scpi
@@ -150,6 +150,7 @@ def test_block(payload: bytes, wire: bytes) -> None:
     assert scpi.block(payload) == wire
 
 
+@settings(deadline=None)
 @given(st.lists(st.floats(allow_nan=False, allow_infinity=False), max_size=20))
 def test_doubles_travel_exactly(values: list[float]) -> None:
     """Both byte orders give back the same bits."""
@@ -161,6 +162,7 @@ def test_doubles_travel_exactly(values: list[float]) -> None:
         assert struct.unpack(f"{order}{len(values)}d", wire[2 + digits :]) == tuple(values)
 
 
+@settings(deadline=None)
 @given(st.lists(st.integers(-(10**7) + 1, 10**7 - 1), min_size=1, max_size=20), st.integers(-12, 12))
 def test_text_numbers_travel_exactly(mantissas: list[int], exponent: int) -> None:
     """Seven digits with exponent, out and in again."""
@@ -168,6 +170,7 @@ def test_text_numbers_travel_exactly(mantissas: list[int], exponent: int) -> Non
     assert [scpi.number(text) for text in scpi.nr3(values).decode().split(",")] == values
 
 
+@settings(deadline=None)
 @given(st.binary(max_size=60))
 def test_any_bytes_are_commands_or_an_error(message: bytes) -> None:
     """Nothing but ScpiError comes out of noise, and it is a command error."""

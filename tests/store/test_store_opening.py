@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import os
+import shutil
 import sqlite3
 from pathlib import Path
 
@@ -9,7 +11,7 @@ import pytest
 from store_examples import NOW, new_store, screen, screened
 
 from harness.errors import SetupError, StationError
-from harness.store import open_store, verify
+from harness.store import open_store, verify, verify_at
 from harness.store.tables import APPLICATION_ID
 
 
@@ -119,6 +121,61 @@ def test_an_empty_or_half_made_store_is_made_whole(tmp_path: Path) -> None:
         with new_store(tmp_path / name) as store:
             screen(store)
             assert verify(store).sound
+
+
+@pytest.mark.parametrize("mode", ["read", "write"])
+def test_an_unfinished_change_of_another_program_is_left_alone(tmp_path: Path, mode: str) -> None:
+    """A database whose writer died in the middle is not repaired by looking at it, nor called read-only."""
+    raw = sqlite3.connect(tmp_path / "other.db", isolation_level=None)
+    raw.execute("CREATE TABLE parts (id)")
+    raw.execute("PRAGMA cache_size=1")
+    raw.execute("BEGIN IMMEDIATE")
+    for _ in range(20):
+        raw.execute("INSERT INTO parts VALUES (zeroblob(3000))")
+    for name in ("other.db", "other.db-journal"):
+        shutil.copy(tmp_path / name, tmp_path / f"left-{name}")
+    raw.rollback()
+    raw.close()
+    before = snapshot(tmp_path)
+    assert "was never finished (left-other.db-journal lies beside it)" in refused(str(tmp_path / "left-other.db"), mode)
+    assert snapshot(tmp_path) == before
+
+
+def test_a_new_store_is_one_file_from_the_start(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """The name appears only with the whole store behind it; nothing else stays; without hard links it works as well."""
+    whole: list[bool] = []
+    link = os.link
+
+    def watched(made: Path, name: Path) -> None:
+        whole.append(verify_at(str(made), now=NOW).sound and not name.exists())
+        link(made, name)
+
+    def refusing(made: Path, name: Path) -> None:
+        raise PermissionError
+
+    for name, instead in (("a.db", watched), ("b.db", refusing)):
+        monkeypatch.setattr("os.link", instead)
+        with open_store(str(tmp_path / name), mode="write", now=NOW) as store:
+            assert verify(store).sound
+    assert whole == [True]
+    assert sorted(one.name for one in tmp_path.iterdir()) == ["a.db", "b.db"]
+
+
+def test_of_two_creators_the_first_stays(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A store that another process made in the meantime is opened, not overwritten."""
+    path = tmp_path / "s.db"
+    link = os.link
+
+    def late(made: Path, name: Path) -> None:
+        monkeypatch.setattr("os.link", link)
+        with new_store(path) as first:
+            screen(first)
+        link(made, name)
+
+    monkeypatch.setattr("os.link", late)
+    with open_store(str(path), mode="write", now=NOW) as store:
+        assert len(store.history("FH-0001")) == 1
+    assert [one.name for one in tmp_path.iterdir()] == ["s.db"]
 
 
 def test_a_store_that_does_not_say_its_schema_is_refused(tmp_path: Path) -> None:

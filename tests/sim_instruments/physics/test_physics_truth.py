@@ -35,6 +35,7 @@ def test_nominal_parts_are_what_the_drawing_says(family: str) -> None:
         assert low < t[key] < high, key
     assert t["unwanted_g"] == 0
     assert characteristics(nominal_part(family))["unwanted_f"] is None
+    assert {type(value) for value in t.values()} == {float}  # plain, so that they go into JSON
 
 
 @pytest.mark.parametrize("family", FAMILIES)
