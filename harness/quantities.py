@@ -41,13 +41,12 @@ _UNITS: dict[str, tuple[str, float, bool]] = {
     "°": ("deg", 1.0, False),
     "1": ("1", 1.0, False),
     "": ("1", 1.0, False),
-    "%": ("1", 1.0, False),
-    "ppm": ("1", 1.0, False),
+    "%": ("1", 1e-2, False),
+    "ppm": ("1", 1e-6, False),
     "1/K": ("1/K", 1.0, False),
-    "%/K": ("1/K", 1.0, False),
-    "ppm/K": ("1/K", 1.0, False),
+    "%/K": ("1/K", 1e-2, False),
+    "ppm/K": ("1/K", 1e-6, False),
 }
-_OWN_POWERS = {"%": -2, "%/K": -2, "ppm": -6, "ppm/K": -6}
 
 _SHOWN = {"ohm": "Ω", "degC": "°C", "deg": "°", "1": ""}
 # Thousands may stand apart, as ``format_si`` writes them: a space, or a no-break, thin or narrow one.
@@ -71,7 +70,7 @@ def unit_factor(unit: str, dimension: str) -> tuple[float, int]:
     unit = unit.strip()
     if unit in _UNITS:
         si, factor, _ = _UNITS[unit]
-        power = _OWN_POWERS.get(unit, 0)
+        power = 0
     else:
         si, factor, prefixable = _UNITS.get(unit[1:], ("", 1.0, False))
         if unit[:1] not in PREFIXES or not prefixable:
@@ -91,7 +90,7 @@ def scale(value: float, unit: str, dimension: str) -> float:
     factor, power = unit_factor(unit, dimension)
     if not math.isfinite(value):
         return float(value)
-    return float(Decimal(repr(float(value))).scaleb(power) * Decimal(factor))
+    return float(Decimal(repr(float(value))).scaleb(power) * Decimal(repr(factor)))
 
 
 def parse(text: str, dimension: str) -> float:

@@ -9,7 +9,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from harness.errors import FileMistakes, Mistake, RingtrueError
+from harness.errors import FileMistakes, Mistake, RingtrueError, SetupError
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -60,6 +60,14 @@ def read_text(path: Path) -> str:
         raise FileMistakes([Mistake(str(path), None, "", text, "Check its name and its permissions.")]) from exc
 
 
+def write_text(path: Path, text: str) -> None:
+    """Write a file asked for on the command line. Raises SetupError."""
+    try:
+        path.write_text(text, encoding="utf-8")
+    except OSError as exc:
+        raise SetupError(f"the file cannot be written ({exc.strerror or exc}).", place=str(path)) from exc
+
+
 def read_limits(path: Path) -> LimitSet:
     from harness.judging.limit_file import parse_limits
 
@@ -68,15 +76,21 @@ def read_limits(path: Path) -> LimitSet:
 
 def open_reading(store: str | None) -> Store:
     """The store, read-only; never made by reading."""
-    from harness.station.places import store_url
     from harness.store import open_store
 
-    return open_store(store_url(store, environment(), _station_store()), mode="read", now=clock())
+    return open_store(store_place(store), mode="read", now=clock())
+
+
+def store_place(store: str | None) -> str:
+    """Where the store is: the option, RINGTRUE_STORE, the default station file's, the user's data folder."""
+    from harness.station.places import store_url
+
+    named = store or environment().get("RINGTRUE_STORE")
+    return named or store_url(None, environment(), _station_store())
 
 
 def _station_store() -> str | None:
     """The store that the default station file names, where there is one."""
-    from harness.errors import SetupError
     from harness.station import parse_station, station_path
 
     try:

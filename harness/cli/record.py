@@ -5,7 +5,7 @@ from __future__ import annotations
 import typer
 
 from harness.cli.options import JsonOption, StoreOption
-from harness.cli.output import console, open_reading, print_json_line
+from harness.cli.output import clock, console, print_json_line, store_place
 
 app = typer.Typer(help="The store: is its evidence sound?", no_args_is_help=True, rich_markup_mode=None)
 
@@ -22,10 +22,9 @@ def verify(store: StoreOption = None, json: JsonOption = False) -> None:
     Example: ringtrue record verify --store line-3.db
     """
     from harness.report import terminal
-    from harness.store import verify as check
+    from harness.store import verify_at
 
-    with open_reading(store) as opened:
-        found = check(opened)
+    found = verify_at(store_place(store), now=clock())
     if json:
         print_json_line(
             {

@@ -28,7 +28,8 @@ def replay(
 
     Example: ringtrue replay LOT-7 --limits limits/mist-discs/MD-1650.toml
     """
-    from harness.report import json_form, terminal
+    from harness.cli.showing import judgement_line, replay_summary
+    from harness.report import json_form
 
     _check_fixture(fixture)
     limit_set = read_limits(limits)
@@ -42,10 +43,9 @@ def replay(
             print_json_line(json_form.judgement_form(result.serial, result.source, result.judgement))
         else:
             shown.append(result)
-            original = None if result.original is None else result.original.record.judgement
-            out.print(terminal.judgement_line(result.serial, result.judgement, was=original))
+            out.print(judgement_line(result))
     if not json:
-        out.print(terminal.replay_summary([(r.judgement, r.original and r.original.record.judgement) for r in shown]))
+        out.print(replay_summary(shown))
     for trouble in troubles:
         print_error(trouble)
     if troubles:

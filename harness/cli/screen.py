@@ -17,6 +17,8 @@ from harness.cli.output import clock, console, environment, print_json_line, rea
 from harness.errors import SetupError
 
 if TYPE_CHECKING:
+    from rich.console import Console
+
     from harness.records import LimitSet
     from harness.run.events import Event
     from harness.run.part import Job
@@ -74,7 +76,7 @@ def screen(
     ) as opened:
         job = Job(lot, limit_set, opened.correction, opened.conditions(age_h), who, software(), clock)
         source = _source(opened, job, listed, serials == "auto", tray)
-        show = _show_json if json else _shower(limit_set)
+        show = _show_json if json else shower(limit_set, console())
         held = False
         for event in screen_lot(opened, job, source, stopping):
             show(event)
@@ -180,12 +182,10 @@ def _show_json(event: Event) -> None:
     )
 
 
-def _shower(limits: LimitSet) -> Callable[[Event], None]:
+def shower(limits: LimitSet, out: Console) -> Callable[[Event], None]:
     """Prints verdicts for a person; what the station waits for stands on the same terminal."""
     from harness.cli.showing import attempt_block, event_text
     from harness.run.events import Recorded
-
-    out = console()
 
     def show(event: Event) -> None:
         if isinstance(event, Recorded):

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections import Counter
+from collections.abc import Callable, Mapping, Sequence
 
 from rich.console import Group, RenderableType
 from rich.text import Text
 
 from harness.records import Judgement, LimitSet, Record
+from harness.replay import Replayed
 from harness.report.terminal import verdict_text
 from harness.run import events as e
 
@@ -64,3 +66,24 @@ def action_for(judgement: Judgement, limits: LimitSet, final: bool) -> str:
     first = judgement.reasons[0].characteristic
     actions = [r.action for r in limits.requirements if r.characteristic == first and r.action]
     return actions[0] if actions else ""
+
+
+def judgement_line(result: Replayed) -> RenderableType:
+    """One sweep judged again, and what it was before where that differs."""
+    judgement = result.judgement
+    line = Text.assemble((f"{result.serial:<16} ", "bold"), verdict_text(judgement.verdict, judgement.grade))
+    if result.original is not None and result.original.record.judgement.verdict is not judgement.verdict:
+        line.append(f"  (was {result.original.record.judgement.verdict.value})", style="bold")
+    if judgement.reasons:
+        line.append(f"  {judgement.reasons[0].text}", style="not bold")
+    return line
+
+
+def replay_summary(results: Sequence[Replayed]) -> str:
+    """How many sweeps came out how, and how many changed."""
+    counts = Counter(result.judgement.verdict.value for result in results)
+    told = ", ".join(f"{counts[verdict]} {verdict}" for verdict in ("pass", "fail", "no verdict") if counts[verdict])
+    stored = [r for r in results if r.original is not None]
+    changed = sum(r.original.record.judgement.verdict is not r.judgement.verdict for r in stored if r.original)
+    was = f" {changed} of {len(stored)} differ from the verdict on record, which stays." if stored else ""
+    return f"{len(results)} sweeps: {told or 'nothing'}.{was}"

@@ -227,7 +227,7 @@ def _finish(
     left = modes.leftover(data.f_hz[0], z, fitted.weight[0], circuit)
     used = Data(data.f_hz, data.r_ohm, data.x_ohm, fitted.weight, None)
     scale = float(fitted.scale[0])
-    lag = _lag_one(used, fitted)
+    lag = _lag_one(fitted)
     # neighbours that err alike tell less than they seem to: a first-order autoregression's variance is
     # (1 + ρ)/(1 − ρ) times as large
     stretch = (1 + lag) / (1 - lag) * max(1.0, (noise or 0.0) / max(scale, 1e-30)) ** 2
@@ -253,15 +253,10 @@ def _overlap(a: tuple[float, float], b: tuple[float, float]) -> tuple[float, flo
     return max(a[0], b[0]), min(a[1], b[1])
 
 
-def _lag_one(data: Data, fitted: Fitted) -> float:
+def _lag_one(fitted: Fitted) -> float:
     """Correlation of neighbouring residuals, between 0 and 0.9; 0 where it could be chance."""
-    value = model.misfit(fitted.parameters, data)[0]
-    n = data.f_hz.shape[-1]
-    kept = data.weight[0] > 0
-    parts = [part[kept] for part in (value[:n], value[n:])]
-    below = sum(float((part**2).sum()) for part in parts)
-    rho = sum(float((part[1:] * part[:-1]).sum()) for part in parts) / max(below, 1e-300)
-    return float(np.clip(rho, 0.0, 0.9)) if rho > 3 / np.sqrt(2 * kept.sum()) else 0.0
+    rho = float(fitted.lag_one[0])
+    return float(np.clip(rho, 0.0, 0.9)) if rho > 3 / np.sqrt(2 * fitted.weight[0].sum()) else 0.0
 
 
 def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:

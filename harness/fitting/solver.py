@@ -94,7 +94,9 @@ def _polish(evaluate: Evaluate, p: Floats, columns: list[int], converged: NDArra
         rows = rows[move]
         if rows.size == 0:
             break
-        p[np.ix_(rows, columns)] += step[move]
+        moved = p[rows]
+        moved[:, columns] += step[move]
+        p[rows] = moved
         cost[rows], gradient[rows], normal[rows] = _normal(*evaluate(p[rows], rows)[:2])
     return Solution(p, cost, normal, converged & np.isfinite(cost))
 

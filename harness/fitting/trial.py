@@ -14,13 +14,16 @@ from harness.records import Floats
 WILD = 8.0  # a lone point this many times the typical misfit, and four times its neighbours', is a bounced contact
 SIGNIFICANT = 60.0  # least fall of misfit²/noise² that a branch must bring, against one found anywhere by chance
 _HALF_POWER_WIDTHS = 2.0
+_MOST_LOSS = 0.5  # |tan δ| of what lies beside the branch; beyond, it is no dielectric
+_ALIKE = 0.5  # correlation of neighbouring residuals from which a sweep's wandering could look like a resonance
 _LEAST_POINTS = 3  # within two half-power half-widths of fs
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Fitted:
     """Rows fitted: ``parameters`` (B, P); ``covariance`` (B, F, F) of the free ones, scaled; ``scale`` (B,) the
-    noise estimate (relative, or in units of the sigma given); ``relative_rms`` (B,); ``weight`` (B, N) as used."""
+    noise estimate (relative, or in units of the sigma given); ``relative_rms`` (B,); ``weight`` (B, N) as used;
+    ``lag_one`` (B,) the correlation of neighbouring residuals."""
 
     parameters: Floats
     covariance: Floats
@@ -30,10 +33,21 @@ class Fitted:
     cost: Floats
     converged: NDArray[np.bool_]
     weight: Floats
+    lag_one: Floats
 
     def row(self, b: int) -> Fitted:
         pick = slice(b, b + 1)
-        return Fitted(*(getattr(self, name)[pick] for name in self.__slots__))
+        return Fitted(
+            self.parameters[pick],
+            self.covariance[pick],
+            self.scale[pick],
+            self.relative_rms[pick],
+            self.dof[pick],
+            self.cost[pick],
+            self.converged[pick],
+            self.weight[pick],
+            self.lag_one[pick],
+        )
 
 
 def fit_branches(data: Data, begin: Floats, free: tuple[int, ...], *, rejecting: bool = True) -> Fitted:
@@ -77,23 +91,31 @@ def _finish(data: Data, solution: solver.Solution, free: tuple[int, ...]) -> Fit
     # the scale is itself estimated: a t-distributed quantity's standard deviation (JCGM 100, G.3; JCGM 101, 6.4.9)
     student = dof / np.maximum(dof - 2, 1)
     covariance = solver.covariance(solution.normal) * (scale2 * student)[:, None, None]
-    relative = model.misfit(solution.parameters, Data(data.f_hz, data.r_ohm, data.x_ohm, data.weight, None))
-    rms = _measured_rms(solution.parameters, data, relative)
+    circuit = model.circuit_of(solution.parameters)
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        rm, xm = model.impedance(circuit, *model.admittance(circuit, data.f_hz))
+        rms = _measured_rms(data, rm, xm)
+        lag = _lag_one(data, rm, xm)
     return Fitted(
-        solution.parameters, covariance, np.sqrt(scale2), rms, dof, solution.cost, solution.converged, data.weight
+        solution.parameters, covariance, np.sqrt(scale2), rms, dof, solution.cost, solution.converged, data.weight, lag
     )
 
 
-def _measured_rms(parameters: Floats, data: Data, relative: Floats) -> Floats:
+def _measured_rms(data: Data, rm: Floats, xm: Floats) -> Floats:
     """√mean(|ΔZ|²/|Z|²) over the points kept, |Z| as measured."""
-    circuit = model.circuit_of(parameters)
-    n = data.f_hz.shape[-1]
-    square = relative[:, :n] ** 2 + relative[:, n:] ** 2  # |ΔZ|²/|Z_model|²
-    a, b = model.admittance(circuit, data.f_hz)
-    rm, xm = model.impedance(circuit, a, b)
     measured = data.r_ohm**2 + data.x_ohm**2
-    ratio = (rm**2 + xm**2) / np.where(measured > 0, measured, 1.0)
-    return np.asarray(np.sqrt((square * ratio).sum(axis=-1) / np.maximum(data.weight.sum(axis=-1), 1)))
+    square = ((rm - data.r_ohm) ** 2 + (xm - data.x_ohm) ** 2) / np.where(measured > 0, measured, 1.0)
+    return np.asarray(np.sqrt((data.weight * square).sum(axis=-1) / np.maximum(data.weight.sum(axis=-1), 1)))
+
+
+def _lag_one(data: Data, rm: Floats, xm: Floats) -> Floats:
+    """Correlation ``(B,)`` of each point's misfit with its neighbour's, real and imaginary parts together."""
+    scale = data.weight / (np.hypot(rm, xm) if data.sigma_ohm is None else data.sigma_ohm)
+    alike, all_of_it = np.zeros(len(scale)), np.full(len(scale), 1e-300)
+    for part in ((rm - data.r_ohm) * scale, (xm - data.x_ohm) * scale):
+        alike = alike + (part[:, 1:] * part[:, :-1]).sum(axis=-1)
+        all_of_it = all_of_it + (part * part).sum(axis=-1)
+    return np.asarray(alike / all_of_it)
 
 
 def _lone_wild(value: Floats, weight: Floats) -> NDArray[np.bool_]:
@@ -121,7 +143,11 @@ def judge_fit(data: Data, fitted: Fitted, window: tuple[float, float] | None) ->
     with np.errstate(divide="ignore", invalid="ignore"):
         gain = (bare - fitted.cost) / np.maximum(noise2, 1e-24)
         inside = (fs >= low) & (fs <= high)
+        # neighbours that err alike count for less: as much as a first-order autoregression's would
+        gain = gain * np.where(fitted.lag_one > _ALIKE, (1 - fitted.lag_one) / (1 + fitted.lag_one), 1.0)
         sound = inside & (gain > SIGNIFICANT) & (q > 1.5) & (np.abs(circuit.theta_rad[:, 0]) < 1.2)
+        u_loss = np.sqrt(fitted.covariance[:, 1, 1])
+        sound &= ~(np.abs(circuit.tan_delta) - 3 * u_loss > _MOST_LOSS)
         sound &= np.isfinite(fitted.cost) & _turns(data, fitted.weight)
         near = np.abs(q[:, None] * (data.f_hz / fs[:, None] - fs[:, None] / data.f_hz)) <= _HALF_POWER_WIDTHS
     points = (near & (fitted.weight > 0)).sum(axis=-1)

@@ -8,13 +8,14 @@ printed adds up.
 from __future__ import annotations
 
 import math
-from decimal import Decimal
+from decimal import Decimal, localcontext
 
 from harness.characteristics import CHARACTERISTICS
 from harness.quantities import format_si, group, unit_factor, written
 from harness.records import LimitSet, Reason, Requirement
 
 _DIGITS_OF_DIFFERENCE = 2
+_PRECISION = 700  # digits that hold any two floats' difference exactly
 _LONGEST = 12  # decimals, or digits before the point, beyond which a power of ten reads better
 
 # What the operator does where no requirement's own action applies.
@@ -79,10 +80,16 @@ def decimals_to_tell(difference: Decimal, written_out: Decimal) -> int:
 
 def plain(number: Decimal, decimals: int) -> str:
     """A number with so many decimals and spaces in thousands; as a power of ten where that would be too long."""
+    shown = to_decimals(number, decimals)
     if decimals <= _LONGEST and number.adjusted() <= _LONGEST:
-        text = f"{number:.{decimals}f}"
-        return group(text.lstrip("-") if not Decimal(text) else text)
-    return f"{number:.{max(0, number.adjusted() + decimals)}e}"
+        return group(f"{shown:.{decimals}f}")
+    return f"{shown:.{max(0, shown.adjusted() + decimals)}e}" if shown else "0"
+
+
+def to_decimals(number: Decimal, decimals: int) -> Decimal:
+    """``number`` rounded to so many decimals; never a negative zero."""
+    with localcontext(prec=_PRECISION):
+        return number.quantize(Decimal(1).scaleb(-decimals)) + 0
 
 
 def past_limit(requirement: Requirement, value: float, limit: float, *, above: bool) -> str:
@@ -135,9 +142,11 @@ class _Shown:
         bound = in_unit(limit, requirement.unit, dimension)
         difference = abs(number - bound)
         decimals = decimals_to_tell(difference, bound)
+        with localcontext(prec=_PRECISION):  # from what is printed, so that the three add up
+            shown = abs(to_decimals(number, decimals) - to_decimals(bound, decimals))
         self.value = _with_unit(number, decimals, requirement)
         self.limit = _with_unit(bound, decimals, requirement)
-        self.difference = _with_unit(difference, decimals, requirement)
+        self.difference = _with_unit(shown, decimals, requirement)
 
 
 def _with_unit(number: Decimal, decimals: int, requirement: Requirement) -> str:

@@ -28,7 +28,11 @@ def read_table(data: bytes, mistakes: Mistakes, z0_ohm: float) -> Points:
     content = [(number, text) for number, text in enumerate(lines, 1) if text.strip() and not _is_comment(text)]
     if not content:
         mistakes.stop(None, "", "the file holds nothing but comments.", "Export the sweep again.")
-    separator = _separator(content[0][1])
+    first_line, first = content[0]
+    separator = _separator(first)
+    if separator not in first and len(first.split()) > 1:
+        remedy = "Separate them by commas; a Touchstone file's name ends in .s1p, .s2p or .ts."
+        mistakes.stop(first_line, "", "the columns are separated by spaces.", remedy)
     rows = _split(content, separator, mistakes)
     line, header = next(rows, (1, []))
     if header and all(is_number(cell) or is_comma_number(cell) for cell in header):

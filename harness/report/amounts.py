@@ -15,6 +15,7 @@ from harness.records import Requirement
 COVERAGE = 2.0  # the factor k of every ± on a report
 NOTHING = "–"
 _DIGITS = 6  # significant digits where no uncertainty or spread says how many are worth showing
+_STEP_DIGITS = 3  # significant digits of a spread: the outer values still tell apart when one part lies far off
 _MOST_DIGITS = 15  # what a float holds
 _MOST_DECIMALS = 3  # beyond which a smaller prefix reads better
 _LONGEST_WHOLE = 1e6
@@ -77,12 +78,12 @@ class Scale:
         return float(in_unit(value, self.unit, self.dimension))
 
     def text(self, value: float | None, step: float | None = None) -> str:
-        """``value`` to two significant digits of ``step`` (SI: a spread), or to six of its own."""
+        """``value`` to three significant digits of ``step`` (SI: a spread), or to six of its own."""
         if value is None or not math.isfinite(value):
             return NOTHING
         number = in_unit(value, self.unit, self.dimension)
         if step and math.isfinite(step):
-            decimals = 1 - in_unit(step, self.unit, self.dimension).adjusted()
+            decimals = _STEP_DIGITS - 1 - in_unit(step, self.unit, self.dimension).adjusted()
         else:
             decimals = _DIGITS - 1 - number.adjusted() if number else 0
         return plain(number, min(max(0, decimals), max(0, _MOST_DIGITS - 1 - number.adjusted())))

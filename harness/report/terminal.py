@@ -18,7 +18,7 @@ from harness.judging.explaining import explanation
 from harness.judging.wording import label
 from harness.records import Caveat, Fit, FitStatus, LimitSet, Record, Requirement, Value
 from harness.report.amounts import NOTHING, Scale, scale_for, uncertain
-from harness.report.words import MARKS, counted, lot_mark, lot_sentence, percent, phrase, visible
+from harness.report.words import LOT_WORDS, MARKS, counted, lot_mark, lot_sentence, percent, phrase, visible
 from harness.statistics.capability import Capability, Index
 from harness.statistics.lot import LotStatistics, requirements_by_key
 from harness.statistics.yields import FINAL, FIRST_PASS, Share, Yields
@@ -53,8 +53,13 @@ def lot_summary(statistics: LotStatistics, lot: str, limits: LimitSet) -> Render
     mark, against = lot_mark(yields, limits)
     head = _plain(f"Lot {lot}", "bold")
     head.append(visible(f"  {limits.part_number}, limits revision {limits.revision}"), style="not bold dim")
-    state = Text(f"{MARKS[mark].shape} ", style=f"bold {MARKS[mark].colour}") if mark else Text()
-    blocks: list[RenderableType] = [head, _plain(lot_sentence(yields), "bold"), state.append(against), Text()]
+    state = Text(f"{MARKS[mark].shape} {LOT_WORDS[mark]}  ", style=f"bold {MARKS[mark].colour}") if mark else Text()
+    blocks: list[RenderableType] = [
+        head,
+        _plain(lot_sentence(yields), "bold"),
+        state.append(against, "not bold"),
+        Text(),
+    ]
     blocks += [_counts(yields), Text(), _yields(yields, statistics.confidence)]
     if yields.fail_reasons:
         blocks += [Text(), _fail_reasons(yields)]
@@ -271,7 +276,7 @@ def soundness(found: SoundnessLike) -> RenderableType:
     """The store's soundness: one line first, then how far each chain goes, then every finding."""
     records = counted(sum(chain.records for chain in found.chains), "record", "records")
     if found.sound:
-        head = Text("● SOUND", style="bold green").append(f"  {records}, every one as it was written.", "not bold")
+        head = Text("● SOUND", style="bold green").append(f"  {records}, nothing found wrong.", "not bold")
     else:
         count = counted(len(found.findings), "finding", "findings")
         head = Text("■ UNSOUND", style="bold red").append(f"  {count} in {records}.", "not bold")

@@ -31,6 +31,9 @@ MARKS: Mapping[str, Mark] = {
     "no verdict": Mark("NO VERDICT", "▲", "yellow", "#ffd000", "#14181d"),
 }
 
+# What a lot's mark says beside its shape and colour.
+LOT_WORDS: Mapping[str, str] = {"pass": "YIELD MET", "fail": "YIELD TOO LOW", "no verdict": "NOT YET JUDGED"}
+
 # What a reason says in a few words, where the sentence of the record is not at hand; {} is the characteristic's sign.
 _PHRASES = {
     "above-max": "{} above the highest allowed",

@@ -10,11 +10,12 @@ ISO 8601 UTC text with microseconds and Z.
     verify(store) → Soundness               verifying.py, checks/
 
 To add a column or table: ``tables.py``, with a new SCHEMA_VERSION; what repeats the document must be compared in
-``verify``. To add a key to the document: ``canonical.py``, with a default for documents that do not have it. To add a
+``checks``. To add a key to the document: ``canonical.py``, with a default for documents that do not have it. To add a
 packing of sweeps: a format byte in ``sweep_codec.py``; old ones stay readable.
 """
 
 from harness.store.checks.findings import Finding
+from harness.store.engines import sqlite_version
 from harness.store.opening import open_store
 from harness.store.results import (
     AttemptId,
@@ -41,6 +42,7 @@ __all__ = [
     "StoredRecord",
     "Written",
     "open_store",
+    "sqlite_version",
     "verify",
     "verify_at",
 ]

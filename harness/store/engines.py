@@ -48,6 +48,11 @@ _TROUBLE = {
 }
 
 
+def sqlite_version() -> str:
+    """The version of the SQLite in use here."""
+    return str(sqlite.sqlite_version)
+
+
 def connect(path: Path, mode: str) -> Any:
     """A bare driver connection; mode "read" neither creates nor changes the file."""
     access = {"read": "ro", "write": "rwc"}[mode]

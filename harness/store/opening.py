@@ -99,7 +99,7 @@ def _look(path: Path, place: str) -> int | None:
     journal = path.with_name(f"{path.name}-journal")
     if journal.exists() and journal.stat().st_size:
         raise SetupError(
-            f"a change to {place} was never finished ({journal.name} lies beside it), which no ringtrue store ever has.",
+            f"{place} is not a ringtrue store: a change to it was never finished ({journal.name} lies beside it).",
             remedy=_GIVE_ANOTHER,
         )
     return _version(path, place)
@@ -129,7 +129,7 @@ def _version(path: Path, place: str) -> int | None:
 
 
 def _create(path: Path, place: str, made_by: str, now: str) -> None:
-    """Make the store beside its place and give it its name at the end, so that a killed creation leaves no half store."""
+    """Make the store beside its place and name it at the end: a killed creation leaves no half store."""
     made = [folder for folder in (path.parent, *path.parent.parents) if not folder.exists()]
     try:
         path.parent.mkdir(parents=True, exist_ok=True)

@@ -27,6 +27,7 @@ SHORT_S = 0.2
 def listening(script: Callable[[socket.socket], None]) -> Iterator[int]:
     """A server on a free port, given; each client gets ``script``, whose connection is closed when it returns."""
     server = socket.create_server(("127.0.0.1", 0))
+    connections: list[socket.socket] = []
     clients: list[threading.Thread] = []
 
     def serve(connection: socket.socket) -> None:
@@ -39,6 +40,7 @@ def listening(script: Callable[[socket.socket], None]) -> Iterator[int]:
                 connection, _ = server.accept()
             except OSError:
                 return
+            connections.append(connection)
             clients.append(threading.Thread(target=serve, args=(connection,)))
             clients[-1].start()
 
@@ -49,6 +51,9 @@ def listening(script: Callable[[socket.socket], None]) -> Iterator[int]:
     finally:
         server.shutdown(socket.SHUT_RDWR)
         server.close()
+        for connection in connections:  # a failed test may have left its end open
+            with contextlib.suppress(OSError):
+                connection.shutdown(socket.SHUT_RDWR)
         for thread in (acceptor, *clients):
             thread.join(5)
             assert not thread.is_alive()

@@ -112,6 +112,8 @@ BAD = {
     "no names, three columns": ("1000,2,3\n2000,3,4\n", 1, "3 numbers, so the columns have no names"),
     "no names, one column": ("1000\n2000\n", 1, "one column of numbers without a name"),
     "names in a comment": ("# frequency_hz,resistance_ohm,reactance_ohm\n1,2,3\n", 2, "stand in a comment"),
+    "spaces between columns": (GOOD.replace(",", " "), 1, "separated by spaces"),
+    "a Touchstone log": ("# MHz S RI R 50\n1 .1 .2\n2 .1 .2\n", 2, "Touchstone file's name ends in"),
     "two pairs": (
         "frequency_hz,impedance_ohm,phase_deg,resistance_ohm,reactance_ohm\n1,2,3,4,5\n",
         1,

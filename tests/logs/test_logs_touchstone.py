@@ -96,9 +96,11 @@ def test_example_13() -> None:
     np.testing.assert_allclose(sweep.z_ohm, 50 * s21 / (2 * (1 - s21)), rtol=1e-14)
 
 
-def test_noise_data_is_left_aside() -> None:
+@pytest.mark.parametrize("noise_begins", ["4", "22"])
+def test_noise_data_is_left_aside(noise_begins: str) -> None:
     """Network data ends at the first frequency that does not rise; a bare # means GHz S MA R 50."""
-    sweep = read_log(EX_18_LIKE.encode(), "ex_18.s2p", fixture="shunt")
+    text = EX_18_LIKE.replace("\n4 .7", f"\n{noise_begins} .7").replace("\n18 2.7", "\n30 2.7")
+    sweep = read_log(text.encode(), "ex_18.s2p", fixture="shunt")
     assert sweep.f_hz.tolist() == [2e9, 22e9]
     assert c.z_to_s21_shunt(sweep.z_ohm, 50.0)[1] == pytest.approx(0.13 * np.exp(1j * np.radians(40)))
 
@@ -185,8 +187,9 @@ def _version_2(ports: int, rows: str, extra: str = "", count: int = 2) -> str:
 
 
 def test_version_2_details() -> None:
-    """Information is skipped, references may go over lines and override R, noise data is left aside."""
-    extra = "[Two-Port Data Order] 21_12\n[Number of Noise Frequencies] 1\n[Reference] 75\n75"
+    """Information is skipped, only the first option line counts, references may go over lines and override R,
+    noise data is left aside."""
+    extra = "# Hz S DB R 1\n[Two-Port Data Order] 21_12\n[Number of Noise Frequencies] 1\n[Reference] 75\n75"
     text = _version_2(2, "1 0 0 .5 0 .5 0 0 0\n2 0 0 .5 0 .5 0 0 0\n[Noise Data]\n4 .7 .64 69 19", extra)
     assert read_log(text.encode(), "x.ts", fixture="series").z_ohm.real == pytest.approx([150, 150])
 

@@ -134,7 +134,7 @@ def test_infinity_passes_through_scale() -> None:
 
 @pytest.mark.parametrize(
     ("unit", "dimension", "factor", "power"),
-    [("kHz", "Hz", 1, 3), ("%", "1", 1, -2), ("ppm/K", "1/K", 1, -6), ("min", "s", 60, 0), (" d ", "h", 24, 0)],
+    [("kHz", "Hz", 1, 3), ("%", "1", 0.01, 0), ("ppm/K", "1/K", 1e-6, 0), ("min", "s", 60, 0), (" d ", "h", 24, 0)],
 )
 def test_factor_and_power(unit: str, dimension: str, factor: float, power: int) -> None:
     """A unit's way to SI is a factor and a power of ten, kept apart."""
