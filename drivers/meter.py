@@ -32,7 +32,9 @@ class ScpiMeter:
 
     ``resource``: ``TCPIP::host::port::SOCKET``, ``TCPIP::host::hislip0::INSTR`` or another form of
     ``wire.resource``; ``dialect``: a name of ``dialect.shipped_dialects()``, a file's path, or a MeterDialect;
-    ``timeout_s``: for connecting and for each answer; the wait for a sweep grows with its points. Raises ResourceError.
+    ``timeout_s``: for connecting and for each answer; the wait for a sweep grows with its points;
+    ``opener``: what makes the wire, such as ``functools.partial(open_wire, log=print)`` to see every
+    byte. Raises ResourceError for a string or dialect that cannot be.
 
     ::
 

@@ -47,7 +47,7 @@ def replay_lot(store: Store, lot: str, limits: LimitSet) -> Iterator[Replayed]:
 
 
 def replay_file(path: Path, limits: LimitSet, fixture: str | None) -> Replayed:
-    """A logged sweep from a file; its stem is its serial. A file that cannot be read is a no verdict with its mistakes."""
+    """A logged sweep from a file; its stem is its serial. One that cannot be read is a no verdict with its mistakes."""
     try:
         sweep = read_file(path, fixture)
     except FileMistakes as trouble:

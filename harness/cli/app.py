@@ -33,7 +33,9 @@ def _version(wanted: bool) -> None:
 
 @app.callback()
 def _root(
-    version: Annotated[bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")] = False,
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")
+    ] = False,
 ) -> None:
     """The end-of-line station for piezoelectric transducers: sweep, judge, record, replay."""
 
@@ -61,5 +63,5 @@ def main() -> None:
         sys.exit(130)
     except BrokenPipeError:
         # whoever read our output has gone: nothing more to say, and Python must not try at exit
-        sys.stdout = None  # type: ignore[assignment]
+        sys.stdout = None
         sys.exit(0)

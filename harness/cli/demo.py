@@ -20,7 +20,8 @@ def demo(
     parts: Annotated[int, typer.Option("--parts", min=1, max=5000, help="Parts in the lot.")] = 16,
     seed: Annotated[int, typer.Option("--seed", min=0, help="Another seed, another lot.")] = 7,
     out: Annotated[
-        Path | None, typer.Option("--out", metavar="DIR", help="Where to write. Else ./ringtrue-demo, or the next free.")
+        Path | None,
+        typer.Option("--out", metavar="DIR", help="Where to write. Else ./ringtrue-demo, or the next free."),
     ] = None,
     json: JsonOption = False,
 ) -> None:
@@ -59,7 +60,11 @@ def demo(
 
 
 def _show_changed(out: Console, event: Changed) -> None:
-    out.print(f"{len(event.parts)} of {event.of} sweeps come out differently:" if event.parts else "None comes out differently.")
+    out.print(
+        f"{len(event.parts)} of {event.of} sweeps come out differently:"
+        if event.parts
+        else "None comes out differently."
+    )
     for serial, before, after in event.parts:
         out.print(f"  {serial}: {before} → {after}", markup=False)
 

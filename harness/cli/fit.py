@@ -16,7 +16,7 @@ def fit(
     files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Logged sweeps: CSV or Touchstone.")],
     search: Annotated[
         tuple[str, str] | None,
-        typer.Option("--search", metavar="LO HI", help='Look for the wanted mode here only, e.g. 1.6MHz 1.7MHz.'),
+        typer.Option("--search", metavar="LO HI", help="Look for the wanted mode here only, e.g. 1.6MHz 1.7MHz."),
     ] = None,
     fixture: FixtureOption = None,
     json: JsonOption = False,
@@ -49,8 +49,8 @@ def fit(
             out.print(terminal.fit_table(str(path), found))
     if json:
         print_json_line(forms)
-    for trouble in troubles:
-        print_error(trouble)
+    for each in troubles:
+        print_error(each)
     if troubles:
         raise typer.Exit(2)
 

@@ -31,22 +31,18 @@ def check(
             limits = read_limits(path)
         except FileMistakes as trouble:
             troubles.append(trouble)
-            mistakes = [
-                {"line": m.line, "key": m.key, "text": m.text, "remedy": m.remedy} for m in trouble.mistakes
-            ]
+            mistakes = [{"line": m.line, "key": m.key, "text": m.text, "remedy": m.remedy} for m in trouble.mistakes]
             forms.append({"file": str(path), "sound": False, "mistakes": mistakes})
             continue
-        forms.append(
-            {"file": str(path), "sound": True, "limits": json_form.limit_set_form(limits), "mistakes": []}
-        )
+        forms.append({"file": str(path), "sound": True, "limits": json_form.limit_set_form(limits), "mistakes": []})
         if not json:
             count = len(limits.requirements)
             print(f"{path}: sound. {limits.part_number} revision {limits.revision}, {count} requirements.")
     if json:
         print_json_line(forms)
     else:
-        for trouble in troubles:
-            print_error(trouble)
+        for each in troubles:
+            print_error(each)
     if troubles:
         raise typer.Exit(2)
 

@@ -52,9 +52,7 @@ def replay(
         raise typer.Exit(2)
 
 
-def _replayed(
-    sources: list[str], limits: LimitSet, fixture: str | None, store: str | None
-) -> Iterator[Replayed]:
+def _replayed(sources: list[str], limits: LimitSet, fixture: str | None, store: str | None) -> Iterator[Replayed]:
     """Files are files; everything else is a lot. Every lot is looked up before the first sweep is judged."""
     from harness.replay import replay_file, replay_lot
 

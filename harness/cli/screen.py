@@ -71,9 +71,12 @@ def screen(
     listed = _listed(serials, limit_set)
     url = store_url(store, environment(), spec.store)
     who = operator or spec.operator or _login()
-    with _gentle_stop() as stopping, open_station(
-        spec, path, url, f"ringtrue screen {lot}", clock(), f"ringtrue {software()['ringtrue']}"
-    ) as opened:
+    with (
+        _gentle_stop() as stopping,
+        open_station(
+            spec, path, url, f"ringtrue screen {lot}", clock(), f"ringtrue {software()['ringtrue']}"
+        ) as opened,
+    ):
         job = Job(lot, limit_set, opened.correction, opened.conditions(age_h), who, software(), clock)
         source = _source(opened, job, listed, serials == "auto", tray)
         show = _show_json if json else shower(limit_set, console())
@@ -97,9 +100,7 @@ def _listed(serials: str | None, limits: LimitSet) -> tuple[str, ...] | None:
     return read_list(read_text(Path(serials)), serials, limits.serial_pattern)
 
 
-def _source(
-    station: Station, job: Job, listed: tuple[str, ...] | None, auto: bool, tray: int
-) -> SerialSource:
+def _source(station: Station, job: Job, listed: tuple[str, ...] | None, auto: bool, tray: int) -> SerialSource:
     from harness.run import serials as s
 
     if listed is not None:

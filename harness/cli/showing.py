@@ -21,7 +21,9 @@ def event_text(event: e.Event) -> str:
     """One sentence for everything that is not a verdict; "" for what needs no words."""
     say: Mapping[type, Callable[..., str]] = {
         e.Ready: lambda x: _ready(x),
-        e.Interrupted: lambda x: f"An attempt of an earlier run was interrupted; recorded as no verdict (record {x.written.seq}).",
+        e.Interrupted: lambda x: (
+            f"An attempt of an earlier run was interrupted; recorded as no verdict (record {x.written.seq})."
+        ),
         e.Waiting: lambda x: x.text,
         e.Refused: lambda x: f"Not measured: {x.serial or 'a part without a code'}: {x.text}",
         e.BenchTrouble: lambda x: f"Bench: {x.text}",

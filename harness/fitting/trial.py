@@ -16,6 +16,7 @@ SIGNIFICANT = 60.0  # least fall of misfit²/noise² that a branch must bring, a
 _HALF_POWER_WIDTHS = 2.0
 _MOST_LOSS = 0.5  # |tan δ| of what lies beside the branch; beyond, it is no dielectric
 _ALIKE = 0.5  # correlation of neighbouring residuals from which a sweep's wandering could look like a resonance
+_MOST_MISFIT = 0.3  # relative, that such a sweep may leave
 _LEAST_POINTS = 3  # within two half-power half-widths of fs
 
 
@@ -144,8 +145,11 @@ def judge_fit(data: Data, fitted: Fitted, window: tuple[float, float] | None) ->
         gain = (bare - fitted.cost) / np.maximum(noise2, 1e-24)
         inside = (fs >= low) & (fs <= high)
         # neighbours that err alike count for less: as much as a first-order autoregression's would
-        gain = gain * np.where(fitted.lag_one > _ALIKE, (1 - fitted.lag_one) / (1 + fitted.lag_one), 1.0)
-        sound = inside & (gain > SIGNIFICANT) & (q > 1.5) & (np.abs(circuit.theta_rad[:, 0]) < 1.2)
+        alike = fitted.lag_one > _ALIKE
+        gain = gain * np.where(alike, (1 - fitted.lag_one) / (1 + fitted.lag_one), 1.0)
+        merit = circuit.g_s[:, 0] / (2 * np.pi * fs * circuit.c_f)
+        wandering = alike & ((fitted.relative_rms > _MOST_MISFIT) | (merit < 1))
+        sound = inside & ~wandering & (gain > SIGNIFICANT) & (q > 1.5) & (np.abs(circuit.theta_rad[:, 0]) < 1.2)
         u_loss = np.sqrt(fitted.covariance[:, 1, 1])
         sound &= ~(np.abs(circuit.tan_delta) - 3 * u_loss > _MOST_LOSS)
         sound &= np.isfinite(fitted.cost) & _turns(data, fitted.weight)

@@ -13,9 +13,9 @@ from harness.judging import wording
 from harness.judging.application import droplet_m, power_share
 from harness.judging.limit_checks import FREQUENCIES
 from harness.judging.requirements import acceptance_zone, coverage, greatest_u
-from harness.judging.toml_positions import Path, line_of, positions
 from harness.quantities import format_si
 from harness.records import Grade, LimitSet, Requirement
+from harness.toml.positions import Path, line_of, positions
 
 _KINDS = {
     "thickness": "thickness mode of a plate or disc",

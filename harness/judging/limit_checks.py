@@ -13,9 +13,9 @@ from itertools import pairwise
 from typing import Any
 
 from harness.characteristics import CHARACTERISTICS
-from harness.judging.findings import Finding, table, tables
-from harness.judging.toml_positions import Path
 from harness.quantities import QuantityError, group, parse, scale, unit_factor
+from harness.toml.findings import Finding, table, tables
+from harness.toml.positions import Path
 
 Tables = Mapping[str, Any]
 FREQUENCIES = ("fs", "fp", "fm", "fn", "fr", "fa")

@@ -8,9 +8,11 @@ from __future__ import annotations
 
 from typing import Annotated, Any
 
-from pydantic import BaseModel, ConfigDict, Field
+from pydantic import Field
 
-from harness.judging import readers as r
+from harness.toml import readers as r
+from harness.toml.document import Block
+from harness.toml.findings import tables_of
 
 KINDS = ("thickness", "radial", "length", "length-33", "ring", "stack")
 
@@ -29,12 +31,6 @@ PerKelvin = Annotated[float, r.ratio(dimension="1/K", least=-0.1, below=0.1)]
 PerKelvinU = Annotated[float, r.ratio(dimension="1/K", least=0.0, below=0.1)]
 Celsius = Annotated[float, r.quantity("degC", least=-273.15, below=1500.0)]
 Frequency = Annotated[float, r.quantity("Hz", above=0.0, below=1e11)]
-
-
-class Block(BaseModel):
-    """A table of the file: unknown keys are mistakes."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True)
 
 
 class Mode(Block):
@@ -201,18 +197,8 @@ class LimitFile(Block):
     application: Application = Field(default_factory=Application)
 
 
-# Where each table stands, for "unknown key" hints and the documentation test.
-TABLES: dict[tuple[str, ...], type[Block]] = {
-    (): LimitFile,
-    ("mode",): Mode,
-    ("measurement",): Measurement,
-    ("measurement", "contact"): Contact,
-    ("conditions",): Conditions,
-    ("require",): Require,
-    ("grade",): Grade,
-    ("lot",): Lot,
-    ("application",): Application,
-}
+# Where each table stands, for the checks and the documentation test.
+TABLES = tables_of(LimitFile)
 
 
 def limits_schema() -> dict[str, Any]:

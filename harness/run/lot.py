@@ -76,7 +76,9 @@ def _ahead(
     there = yield from _part(bench, stopping)
     if there:
         return serial
-    return Wait.END if stopping() else Refused(serial.text, "the handler has no more parts; this serial was not measured.")
+    return (
+        Wait.END if stopping() else Refused(serial.text, "the handler has no more parts; this serial was not measured.")
+    )
 
 
 def _after(

@@ -127,7 +127,9 @@ def read_list(text: str, file: str, pattern: str | None) -> tuple[str, ...]:
             mistakes.append(Mistake(file, number, "", fault))
         elif serial in seen:
             mistakes.append(
-                Mistake(file, number, "", f"serial '{serial}' was already in line {seen[serial]}.", "List each part once.")
+                Mistake(
+                    file, number, "", f"serial '{serial}' was already in line {seen[serial]}.", "List each part once."
+                )
             )
         seen.setdefault(serial, number)
     if not seen:

@@ -62,7 +62,9 @@ class LotWatch:
             name = CHARACTERISTICS[self._key[0]].sign if self._key[0] in CHARACTERISTICS else self._key[0]
             where = f" {self._key[1]} its limit" if self._key[1] else ""
             cause = _CAUSES.get(self._key, "the process before this station, or the station itself")
-            return Held(f"{self._same} parts in a row failed for the same reason: {name}{where}. Likely cause: {cause}. {_ASK}")
+            return Held(
+                f"{self._same} parts in a row failed for the same reason: {name}{where}. Likely cause: {cause}. {_ASK}"
+            )
         return None
 
     def short_of_yield(self) -> str:

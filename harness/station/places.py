@@ -31,7 +31,7 @@ def station_path(option: str | None, environment: Mapping[str, str]) -> Path:
 
 
 def find_limits(name: str) -> Path:
-    """A limit file that comes along, by its path below ``limits/``: in the wheel, else beside the checkout's harness."""
+    """A limit file that comes along, by its path below ``limits/``: in the wheel, else in the checkout."""
     package = Path(__file__).resolve().parents[1]
     for folder in (package / "_limits", package.parent / "limits"):
         if (folder / name).is_file():

@@ -141,7 +141,7 @@ SPOILED: list[tuple[str, bytes, type[DriverError], str]] = [
 ]
 
 
-@pytest.mark.parametrize(("question", "answer", "kind", "says"), SPOILED)
+@pytest.mark.parametrize(("question", "answer", "kind", "says"), SPOILED, ids=[f"{row[0]} {row[3]}" for row in SPOILED])
 def test_spoiled_answers(question: str, answer: bytes, kind: type[DriverError], says: str) -> None:
     """Each wrong answer is the error it ought to be, naming the resource; after a reopen, if needed, all is well."""
     fake = FakeMeter()

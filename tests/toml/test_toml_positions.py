@@ -9,7 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from harness.judging.toml_positions import Path, line_of, positions
+from harness.toml.positions import Path, line_of, positions
 
 
 def paths_of(node: Any, path: Path = ()) -> set[Path]:
