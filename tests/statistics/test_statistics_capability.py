@@ -48,7 +48,7 @@ def test_the_e_handbooks_example(least, greatest, pp, ppk):
 
 
 def test_the_chi_square_limits_of_montgomerys_example():
-    """USL 62, LSL 38, n 20, s 1.75 (Montgomery, from memory; recomputed from unrounded inputs): 2.2857, 1.5649…3.0056."""
+    """USL 62, LSL 38, n 20, s 1.75 (Montgomery, from memory; recomputed unrounded): 2.2857, 1.5649 to 3.0056."""
     found = of(spread_like(50.0, 1.75, 20), 38.0, 62.0)
     assert found.pp.value == pytest.approx(2.285714, abs=1e-6)
     assert (found.pp.low, found.pp.high) == pytest.approx((1.5649, 3.0056), abs=5e-5)

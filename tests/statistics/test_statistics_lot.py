@@ -105,7 +105,23 @@ def test_json_has_exactly_the_contracts_keys():
     assert form["limits"] == {"part_number": "MD-1650", "revision": "C", "sha256": "0f" * 32}
     assert list(form["first_pass_yield"]) == list(form["final_yield"]) == ["value", "low", "high"]
     assert list(form["characteristics"]["fs"]) == (
-        "n mean sd min max median unit pp pp_low pp_high ppk ppk_low ppk_high population note".split()
+        [
+            "n",
+            "mean",
+            "sd",
+            "min",
+            "max",
+            "median",
+            "unit",
+            "pp",
+            "pp_low",
+            "pp_high",
+            "ppk",
+            "ppk_low",
+            "ppk_high",
+            "population",
+            "note",
+        ]
     )
 
 
