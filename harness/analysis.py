@@ -30,7 +30,7 @@ from harness.records import (
     Residual,
     Sweep,
     Value,
-)  # fmt: skip
+)
 
 NO_FIXTURE = Correction()
 _SHAPE_ONLY = ("fs", "fp", "bandwidth", "qm", "q_half_power", "unwanted_f")
@@ -110,7 +110,8 @@ def _shifts(sweep: Sweep, found: SingleFit, z: Complexes, correction: Correction
     z0 = found.data.r_ohm[0] + 1j * found.data.x_ohm[0]
     raw = fixture.embed(f, z0, correction)
     impedances = [np.asarray(fixture.correct(f, raw, moved)) for moved in moves.values()]
-    return dict(zip(["model", *moves], single.refits(found, impedances), strict=True))
+    shifts = dict(zip(["span", "place", *moves], single.refits(found, impedances), strict=True))
+    return shifts if found.sloped is None else {**shifts, "background": found.sloped}
 
 
 def _modes(found: SingleFit) -> tuple[Mode, ...]:

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
 
 import numpy as np
 
+from drivers.codec.lines import encode_verdict
 from drivers.errors import (
     AnswerError,
     ConnectionLost,
@@ -104,6 +105,24 @@ class Bench:
             return None
         with _working():
             return self._scanner.read(timeout_s)
+
+    def early_codes(self) -> tuple[str, ...]:
+        """Codes that came since the last ``scan``, taken off the line: none of them is the next part's."""
+        found = []
+        while (code := self.scan(0.0)) is not None:
+            found.append(code)
+        return tuple(found)
+
+    def refuse_untellable(self, grades: Iterable[str]) -> None:
+        """Raise SetupError for a grade that the part handler's line cannot carry; without a handler all will do."""
+        if self._handler is None:
+            return
+        for grade in grades:
+            try:
+                encode_verdict("pass", grade)
+            except ValueError as exc:
+                remedy = "Name the grade otherwise in the limit file."
+                raise SetupError(str(exc), place=f"grade {grade!r}", remedy=remedy) from exc
 
     def next_part(self, timeout_s: float) -> bool | None:
         """Ask the handler for a part: True in the fixture, False none left, None nothing said in time."""

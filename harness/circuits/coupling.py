@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy import special
 
-from harness.circuits.frequencies import bisect
+from harness.circuits.frequencies import root
 from harness.records import Floats
 
 
@@ -51,7 +51,7 @@ def radial_root(poisson: ArrayLike) -> Floats:
     """
     sigma = np.asarray(poisson, dtype=float)
     low, high = np.full(sigma.shape, 1.5), np.full(sigma.shape, 2.4)
-    return bisect(lambda eta: eta * special.j0(eta) - (1 - sigma) * special.j1(eta), low, high)
+    return root(lambda eta: eta * special.j0(eta) - (1 - sigma) * special.j1(eta), low, high)
 
 
 def kp(fs_hz: ArrayLike, fp_hz: ArrayLike, poisson: float) -> Floats:

@@ -5,7 +5,7 @@ and tested here): fs greatest conductance of the wanted branch; fp pole of Z wit
 and greatest |Z|; fr, fa zero susceptance, which exist only where M ≥ 1 + √(1 + 1/r), r = C0/C1.
 
 All work on arrays of circuits ``S``, so that an uncertainty by differences costs one pass. Roots are
-bracketed on a grid of the first circuit and then bisected for all: the others must lie close to it.
+bracketed on a grid of the first circuit and then closed in on for all: the others must lie close to it.
 """
 
 from __future__ import annotations
@@ -18,7 +18,8 @@ from harness.circuits import resonator
 from harness.circuits.resonator import Circuit
 from harness.records import Complexes, Floats
 
-_BISECTIONS = 60
+_MOST_STEPS = 100
+_RESOLUTION = 4 * np.finfo(np.float64).eps
 
 
 def fp_hz(circuit: Circuit) -> Floats:
@@ -40,19 +41,42 @@ def fp_hz(circuit: Circuit) -> Floats:
         return np.asarray(2 * np.pi * f * circuit.c_f - (slope / u).sum(axis=-1))
 
     low = fs * (1 + 1e-12)
-    root = bisect(susceptance, low, high)
-    return np.where(np.isfinite(alone) & (susceptance(high) > 0), root, np.nan)
+    found = root(susceptance, low, high)
+    return np.where(np.isfinite(alone) & (susceptance(high) > 0), found, np.nan)
 
 
-def bisect(function: Callable[[Floats], Floats], low: Floats, high: Floats) -> Floats:
-    """Root of ``function`` between ``low`` and ``high`` (shape ``S``), elementwise; the sign must change there."""
-    a, b = np.array(low, dtype=np.float64), np.array(high, dtype=np.float64)
-    sign_a = np.sign(function(a))
-    for _ in range(_BISECTIONS):
-        middle = 0.5 * (a + b)
-        same = np.sign(function(middle)) == sign_a
-        a, b = np.where(same, middle, a), np.where(same, b, middle)
-    return 0.5 * (a + b)
+def root(function: Callable[[Floats], Floats], low: Floats, high: Floats) -> Floats:
+    """Root of ``function`` between ``low`` and ``high`` (shape ``S``), elementwise; the sign must change there.
+
+    Bisection and inverse quadratic interpolation as in T. R. Chandrupatla, Adv. Eng. Software 28 (1997) 145–149
+    (from memory): the bracket never grows, each element stops by itself, to the last bits of a float.
+    """
+    a, b = np.array(high, dtype=np.float64), np.array(low, dtype=np.float64)
+    fa, fb = function(a), function(b)
+    c, fc = a, fa
+    share, done = np.full(a.shape, 0.5), np.zeros(a.shape, dtype=bool)
+    with np.errstate(all="ignore"):
+        for _ in range(_MOST_STEPS):
+            middle = np.where(done, a, a + share * (b - a))
+            value = np.where(done, fa, function(middle))
+            same = np.sign(value) == np.sign(fa)
+            c, fc = np.where(done, c, np.where(same, a, b)), np.where(done, fc, np.where(same, fa, fb))
+            b, fb = np.where(done | same, b, a), np.where(done | same, fb, fa)
+            a, fa = middle, value
+            smallest = _RESOLUTION * np.abs(a) / np.abs(b - a)
+            done = done | ~(smallest < 0.5) | (fa == 0)
+            if done.all():
+                break
+            share = np.clip(_interpolated(a, b, c, fa, fb, fc), smallest, 1 - smallest)
+    return np.asarray(np.where(np.abs(fa) <= np.abs(fb), a, b))
+
+
+def _interpolated(a: Floats, b: Floats, c: Floats, fa: Floats, fb: Floats, fc: Floats) -> Floats:
+    """How far from a to b to look next: by inverse quadratic interpolation where that is safe, else half."""
+    xi, phi = (a - b) / (c - b), (fa - fb) / (fc - fb)
+    safe = (phi**2 < xi) & ((1 - phi) ** 2 < 1 - xi)
+    quadratic = fa / (fb - fa) * fc / (fb - fc) + (c - a) / (b - a) * fa / (fc - fa) * fb / (fc - fb)
+    return np.where(safe, quadratic, 0.5)
 
 
 def extremum_hz(circuit: Circuit, low_hz: float, high_hz: float, *, greatest: bool) -> Floats:
@@ -62,7 +86,7 @@ def extremum_hz(circuit: Circuit, low_hz: float, high_hz: float, *, greatest: bo
     k = int(np.argmax(level) if greatest else np.argmin(level))
     if k in (0, f.size - 1):
         return np.full(circuit.c_f.shape, np.nan)
-    return _bisect_bracket(lambda x: _slope(circuit, x), circuit, f[k - 1], f[k + 1])
+    return _root_between(lambda x: _slope(circuit, x), circuit, f[k - 1], f[k + 1])
 
 
 def zero_phase_hz(circuit: Circuit, low_hz: float, high_hz: float, *, last: bool) -> Floats:
@@ -77,7 +101,7 @@ def zero_phase_hz(circuit: Circuit, low_hz: float, high_hz: float, *, last: bool
     if np.count_nonzero(np.abs(crossings - k) <= 5) > 1:
         return np.full(circuit.c_f.shape, np.nan)
     low, high = f[max(k - 2, 0)], f[min(k + 3, f.size - 1)]
-    return _bisect_bracket(lambda g: _impedance_at(circuit, g).imag, circuit, low, high)
+    return _root_between(lambda g: _impedance_at(circuit, g).imag, circuit, low, high)
 
 
 def half_power_hz(circuit: Circuit) -> tuple[Floats, Floats, Floats]:
@@ -95,10 +119,10 @@ def half_power_hz(circuit: Circuit) -> tuple[Floats, Floats, Floats]:
         step = 1e-4 * width
         return conductance(f + step) - conductance(f - step)
 
-    peak = bisect(slope, fs - 0.4 * width, fs + 0.4 * width)
+    peak = root(slope, fs - 0.4 * width, fs + 0.4 * width)
     half = 0.5 * conductance(peak)
-    below = bisect(lambda f: conductance(f) - half, np.maximum(peak - 3 * width, 1e-3 * fs), peak)
-    above = bisect(lambda f: conductance(f) - half, peak, peak + 3 * width)
+    below = root(lambda f: conductance(f) - half, np.maximum(peak - 3 * width, 1e-3 * fs), peak)
+    above = root(lambda f: conductance(f) - half, peak, peak + 3 * width)
     return peak, below, above
 
 
@@ -131,9 +155,9 @@ def _slope(circuit: Circuit, f_hz: Floats) -> Floats:
     return level_ohm(circuit, f_hz + step) - level_ohm(circuit, f_hz - step)
 
 
-def _bisect_bracket(function: Callable[[Floats], Floats], circuit: Circuit, low: float, high: float) -> Floats:
+def _root_between(function: Callable[[Floats], Floats], circuit: Circuit, low: float, high: float) -> Floats:
     shape = circuit.c_f.shape
-    return bisect(function, np.full(shape, low), np.full(shape, high))
+    return root(function, np.full(shape, low), np.full(shape, high))
 
 
 def _first(circuit: Circuit) -> Circuit:

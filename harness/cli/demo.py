@@ -32,7 +32,7 @@ def demo(
 
     Example: ringtrue demo --parts 30 --seed 3
     """
-    from harness.cli.screen import shower
+    from harness.cli.watching import shower
     from harness.demo import LIMITS, LOT, Changed, Told, demonstrate, new_folder
     from harness.judging.limit_file import parse_limits
     from harness.station import find_limits

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import os
+import re
 import sys
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -44,8 +46,40 @@ def print_json_line(value: object) -> None:
 
 
 def print_error(error: RingtrueError) -> None:
+    """Every sentence of ``error`` on standard error: a line each in a log, wrapped between words on a terminal."""
     for line in str(error).splitlines():
-        print(f"ringtrue: {line}", file=sys.stderr)
+        say(line)
+
+
+def say(sentence: str) -> None:
+    """A sentence of the program itself, on standard error."""
+    text = f"ringtrue: {plain_times(sentence)}"
+    if sys.stderr.isatty():
+        import shutil
+        import textwrap
+
+        width = shutil.get_terminal_size().columns
+        text = "\n".join(textwrap.wrap(text, width, subsequent_indent="  ", break_on_hyphens=False)) or text
+    print(text, file=sys.stderr, flush=True)
+
+
+def plain_times(text: str) -> str:
+    """Times of records as people read them: to the second.
+
+    >>> plain_times("since 2026-11-20T06:12:09.123456Z")
+    'since 2026-11-20 06:12:09 UTC'
+    """
+    return re.sub(r"(\d{4}-\d\d-\d\d)T(\d\d:\d\d:\d\d)(?:\.\d+)?Z", r"\1 \2 UTC", text)
+
+
+@contextmanager
+def busy(text: str) -> Iterator[None]:
+    """Something that may take a while: says so on a terminal, and takes it away again."""
+    if not sys.stderr.isatty():
+        yield
+        return
+    with console(err=True).status(text):
+        yield
 
 
 def read_text(path: Path) -> str:

@@ -13,12 +13,10 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from harness.cli.options import JsonOption, LimitsOption, StationOption, StoreOption
-from harness.cli.output import clock, console, environment, print_json_line, read_limits, read_text, software
+from harness.cli.output import clock, console, environment, print_json_line, read_limits, read_text, say, software
 from harness.errors import SetupError
 
 if TYPE_CHECKING:
-    from rich.console import Console
-
     from harness.records import LimitSet
     from harness.run.events import Event
     from harness.run.part import Job
@@ -59,6 +57,7 @@ def screen(
 
     Example: ringtrue screen LOT-7 --limits limits/mist-discs/MD-1650.toml
     """
+    from harness.cli.watching import shower
     from harness.run.events import Held
     from harness.run.lot import screen_lot
     from harness.run.part import Job
@@ -78,7 +77,8 @@ def screen(
         ) as opened,
     ):
         job = Job(lot, limit_set, opened.correction, opened.conditions(age_h), who, software(), clock)
-        source = _source(opened, job, listed, serials == "auto", tray)
+        source = _source(opened, job, listed, serials == "auto", tray, stopping)
+        _say_first(url, json)
         show = _show_json if json else shower(limit_set, console())
         held = False
         for event in screen_lot(opened, job, source, stopping):
@@ -100,17 +100,50 @@ def _listed(serials: str | None, limits: LimitSet) -> tuple[str, ...] | None:
     return read_list(read_text(Path(serials)), serials, limits.serial_pattern)
 
 
-def _source(station: Station, job: Job, listed: tuple[str, ...] | None, auto: bool, tray: int) -> SerialSource:
+def _source(
+    station: Station,
+    job: Job,
+    listed: tuple[str, ...] | None,
+    auto: bool,
+    tray: int,
+    stopping: Callable[[], bool],
+) -> SerialSource:
+    """Where serials come from, and what the operator reads about it."""
+    from harness.cli.typing_in import LoadedByHand, TypedLines
     from harness.run import serials as s
 
+    handled = station.bench.has_handler
     if listed is not None:
-        return s.FromList(listed)
+        if handled or not sys.stdin.isatty():
+            return s.FromList(listed)
+        return LoadedByHand(listed, TypedLines(sys.stdin, stopping, "> "), lambda serial: _judged(station, job, serial))
     if auto:
         start = s.auto_start(_serials_of(station, job.lot), job.lot, tray)
-        return s.Numbered(job.lot, tray, start, None if station.bench.has_handler else sys.stdin.readline)
+        ask = None if handled else TypedLines(sys.stdin, stopping, "Next part in place? Enter: ")
+        numbered = s.Numbered(job.lot, tray, start, ask)
+        if handled:
+            numbered.prompt = "The handler brings the parts; they are numbered by tray and position."
+        return numbered
     if station.bench.has_scanner:
-        return s.FromScanner(station.bench)
-    return s.FromKeyboard(sys.stdin.readline)
+        scanner = s.FromScanner(station.bench)
+        if handled:
+            scanner.prompt = "The handler brings the parts; the scanner reads their codes."
+        return scanner
+    return s.FromKeyboard(TypedLines(sys.stdin, stopping, "Serial: "))
+
+
+def _judged(station: Station, job: Job, serial: str) -> bool:
+    standing = station.store.standing(job.lot, serial, job.conditions.element)
+    return standing is not None and standing.verdict.value != "no verdict"
+
+
+def _say_first(store: str, json: bool) -> None:
+    """Where records go, and the caution that belongs before every touch; quiet."""
+    from harness.report.words import CAUTIONS
+
+    out = console(err=json)
+    out.print(CAUTIONS[0], style="dim")
+    out.print(f"Records go to {store}.", style="dim", markup=False)
 
 
 def _serials_of(station: Station, lot: str) -> list[str]:
@@ -152,7 +185,9 @@ def _gentle_stop() -> Iterator[Callable[[], bool]]:
         asked += 1
         if asked > 1:
             raise KeyboardInterrupt
-        print("ringtrue: stopping after the part in hand; once more stops at once.", file=sys.stderr, flush=True)
+        if sys.stderr.isatty():
+            print(file=sys.stderr)  # the terminal has just echoed ^C on this line
+        say("stopping after the part in hand; once more stops at once.")
 
     before = {number: signal.signal(number, ask) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
@@ -181,17 +216,3 @@ def _show_json(event: Event) -> None:
             "final": record.final,
         }
     )
-
-
-def shower(limits: LimitSet, out: Console) -> Callable[[Event], None]:
-    """Prints verdicts for a person; what the station waits for stands on the same terminal."""
-    from harness.cli.showing import attempt_block, event_text
-    from harness.run.events import Recorded
-
-    def show(event: Event) -> None:
-        if isinstance(event, Recorded):
-            out.print(attempt_block(event.record, limits))
-        elif text := event_text(event):
-            out.print(text, markup=False, style="dim")
-
-    return show

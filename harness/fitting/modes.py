@@ -12,7 +12,6 @@ import numpy as np
 
 from harness.circuits import resonator
 from harness.circuits.resonator import Circuit
-from harness.fitting import model
 from harness.fitting.trial import SIGNIFICANT
 from harness.records import Complexes, Floats
 
@@ -94,12 +93,8 @@ def with_branch(parameters: Floats, branch: Floats) -> Floats:
     return np.concatenate([parameters[:-1], branch, parameters[-1:]])
 
 
-def wanted_first(parameters: Floats, window_hz: tuple[float, float]) -> Floats:
-    """The same circuit with its branch of greatest conductance inside the window put first."""
-    circuit = model.circuit_of(parameters)
+def wanted_first(circuit: Circuit, window_hz: tuple[float, float]) -> list[int]:
+    """The order of a circuit's branches that puts the one of greatest conductance inside the window first."""
     inside = (circuit.f_hz >= window_hz[0]) & (circuit.f_hz <= window_hz[1])
-    rank = np.where(inside, circuit.g_s, 0.0)
-    order = [int(rank.argmax())]
-    order += [m for m in range(len(circuit.f_hz)) if m != order[0]]
-    blocks = parameters[model.FIRST_BRANCH : -1].reshape(-1, model.BRANCH)[order]
-    return np.concatenate([parameters[: model.FIRST_BRANCH], blocks.ravel(), parameters[-1:]])
+    first = int(np.where(inside, circuit.g_s, 0.0).argmax())
+    return [first, *(m for m in range(len(circuit.f_hz)) if m != first)]

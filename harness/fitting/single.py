@@ -11,13 +11,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from harness.fitting import model, modes, start, trial
+from harness.fitting import growth, model, modes, start, trial
+from harness.fitting.growth import Grown
 from harness.fitting.model import Data
-from harness.fitting.trial import SIGNIFICANT, Fitted
+from harness.fitting.trial import Fitted
 from harness.records import Complexes, FitStatus, Floats
 
-_MOST_PHASE = 0.6  # rad: a branch turned further is no resonance but a misfit of something else
-_LEAST_Q_SHARE = 0.25  # of the wanted Q: a broader hump is a misfit of the background, not a mode
+_ALIKE = 0.3  # correlation of neighbouring residuals from which another way to the circuit is tried
 _INNER = 0.7  # share of the span that the refit for the model term keeps
 
 
@@ -36,7 +36,8 @@ class Choice:
 @dataclass(frozen=True, slots=True, eq=False)
 class SingleFit:
     """``status`` with a sentence; where ok, the parameters ``(P,)`` (wanted branch first), the free ones' scaled
-    covariance, the noise found (relative), the misfit, the data used and the floor for further modes."""
+    covariance, the noise found (relative), the misfit, the data used and the floor for further modes. ``sloped``: the
+    parameters under the slope of the background that the data, which show none, would still allow (else None)."""
 
     status: FitStatus
     message: str
@@ -51,6 +52,7 @@ class SingleFit:
     dropped: int = 0
     bounced: int = 0
     lag_one: float = 0.0
+    sloped: Floats | None = None
 
 
 def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: float | None = None) -> SingleFit:
@@ -70,12 +72,26 @@ def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: f
     if word != "ok" and choice.span is None:
         begin, located = _second_look(whole, choice, begin, located)
     data = _cut(whole, located, choice)
-    fitted, free = _grow(data, located if data is whole else _refit(data, located), choice)
-    word = str(trial.judge_fit(data, fitted, choice.window_hz)[0])
+    grown = _grow(data, located, choice, refit=data is not whole)
+    word = str(trial.judge_fit(data, grown.fitted, choice.window_hz)[0])
     if word != "ok":
         status = FitStatus(word)
-        return _refused(status, _explain(status, data, fitted), f, z, dropped)
-    return _finish(data, fitted, free, choice, dropped, noise_relative)
+        return _refused(status, _explain(status, data, grown.fitted), f, z, dropped)
+    return _finish(data, grown, choice, dropped, noise_relative)
+
+
+def _grow(data: Data, located: Fitted, choice: Choice, *, refit: bool) -> Grown:
+    """The located branch, on the data kept, with what the data ask for beside it."""
+    free = growth.all_but_rs(located.parameters)
+    if refit:
+        located = trial.fit_branches(data, located.parameters, free)
+    begin, modes_wanted = Grown(located, free), (choice.branches, choice.most_branches)
+    grown = growth.add_modes(data, growth.bear_slope(data, begin), choice.window_hz, *modes_wanted)
+    if grown.fitted.lag_one[0] > _ALIKE:
+        # something is left over: a slope taken early may stand where a mode belongs
+        other = growth.bear_slope(data, growth.add_modes(data, begin, choice.window_hz, *modes_wanted))
+        grown = min(grown, other, key=lambda one: one.information)
+    return growth.with_series_resistance(data, grown) if choice.choose_series_resistance else grown
 
 
 def _locate(data: Data, choice: Choice) -> tuple[Floats, Fitted]:
@@ -115,114 +131,8 @@ def _cut(whole: Data, located: Fitted, choice: Choice) -> Data:
     return Data(whole.f_hz, whole.r_ohm, whole.x_ohm, inside.astype(float), None)
 
 
-def _refit(data: Data, located: Fitted) -> Fitted:
-    return trial.fit_branches(data, located.parameters, _free(located.parameters, False))
-
-
-def _free(parameters: Floats, series_resistance: bool) -> tuple[int, ...]:
-    p = parameters.shape[-1]
-    return (*range(p - 1), *((p - 1,) if series_resistance else ()))
-
-
-def _grow(data: Data, fitted: Fitted, choice: Choice) -> tuple[Fitted, tuple[int, ...]]:
-    """Add branches: up to ``branches`` in any case, beyond that while each is significant."""
-    free = _free(fitted.parameters, False)
-    while model.branches_of(fitted.parameters) < choice.most_branches:
-        more = _one_more(data, fitted, free, choice)
-        if more is None:
-            break
-        gain = (fitted.cost[0] - more[0].cost[0]) / max(more[0].scale[0] ** 2, 1e-24)
-        needed = model.branches_of(fitted.parameters) < choice.branches
-        # by Schwarz's criterion with room to spare, since the branch's place was searched for
-        worth = _information(more[0]) < _information(fitted) - 20
-        if not needed and (gain < SIGNIFICANT or not worth):
-            break
-        fitted, free = more
-    return _with_series_resistance(data, fitted, free) if choice.choose_series_resistance else (fitted, free)
-
-
-def _with_series_resistance(data: Data, fitted: Fitted, free: tuple[int, ...]) -> tuple[Fitted, tuple[int, ...]]:
-    wider = (*free, fitted.parameters.shape[-1] - 1)
-    with_rs = trial.fit_branches(data, fitted.parameters, wider)
-    better = _information(with_rs) < _information(fitted) - 10
-    if better and with_rs.converged[0] and with_rs.parameters[0, -1] > 0 and _sane(data, with_rs):
-        return with_rs, wider
-    return fitted, free
-
-
-def _one_more(
-    data: Data, fitted: Fitted, free: tuple[int, ...], choice: Choice
-) -> tuple[Fitted, tuple[int, ...]] | None:
-    """The fit with the branch that helps most added, and its free parameters; None where none makes sense."""
-    circuit = model.circuit_of(fitted.parameters[0])
-    z = data.r_ohm[0] + 1j * data.x_ohm[0]
-    left = modes.leftover(data.f_hz[0], z, fitted.weight[0], circuit)
-    branch, gain = modes.next_branch(left, circuit, _used(data))
-    if gain <= 0:
-        return None
-    begin = modes.with_branch(fitted.parameters[0], branch)
-    last = begin.size - 1 - model.BRANCH
-    free = (*free, *range(last, last + model.BRANCH))
-    more = trial.fit_branches(data, begin[None, :], free)
-    low, high = _used(data)
-    if not low < np.exp(more.parameters[0, last]) < high:
-        # beyond the data only its slope shows: its own width and phase cannot be told from its height
-        begin = more.parameters[0].copy()
-        begin[[last + model.LN_G, last + model.LN_Q, last + model.THETA]] = (
-            begin[last + model.LN_G] + fitted.parameters[0, 3] - begin[last + model.LN_Q],
-            fitted.parameters[0, 3],
-            0.0,
-        )
-        free = tuple(k for k in free if k not in (last + model.LN_Q, last + model.THETA))
-        more = trial.fit_branches(data, begin[None, :], free)
-    if not more.converged[0] or not _sane(data, more):
-        return None
-    return _reordered(data, more, free, choice)
-
-
-def _reordered(
-    data: Data, fitted: Fitted, free: tuple[int, ...], choice: Choice
-) -> tuple[Fitted, tuple[int, ...]] | None:
-    """The same fit with its strongest branch in the window first, solved again if that changed the order."""
-    ordered = modes.wanted_first(fitted.parameters[0], choice.window_hz)
-    if np.array_equal(ordered, fitted.parameters[0]):
-        return fitted, free
-    everything = _free(ordered, False)
-    again = trial.fit_branches(data, ordered[None, :], everything)
-    return (again, everything) if again.converged[0] and _sane(data, again) else None
-
-
-def _used(data: Data) -> tuple[float, float]:
-    """The range of the points that count."""
-    kept = data.f_hz[0][data.weight[0] > 0]
-    return float(kept[0]), float(kept[-1])
-
-
-def _sane(data: Data, fitted: Fitted) -> bool:
-    """Branches that take power, not wider than the data, and none so near a neighbour that both are one."""
-    circuit = model.circuit_of(fitted.parameters[0])
-    used = data.f_hz[0][fitted.weight[0] > 0]
-    span = used[-1] - used[0]
-    if not np.isfinite(fitted.cost[0]) or np.any(np.abs(circuit.theta_rad) > _MOST_PHASE):
-        return False
-    width = circuit.f_hz / circuit.q
-    inside = (circuit.f_hz > used[0] - span) & (circuit.f_hz < used[-1] + span)
-    wanted_inside = used[0] <= circuit.f_hz[0] <= used[-1]
-    narrow = circuit.q > max(1.0, _LEAST_Q_SHARE * float(circuit.q[0]))
-    return bool(wanted_inside and inside.all() and width[0] < span and narrow.all())
-
-
-def _information(fitted: Fitted) -> float:
-    """Schwarz's criterion (G. Schwarz, 1978) for Gaussian noise of unknown scale."""
-    n = 2 * float(fitted.weight[0].sum())
-    parameters = n - float(fitted.dof[0])
-    return float(n * np.log(max(fitted.cost[0], 1e-300) / n) + parameters * np.log(n))
-
-
-def _finish(
-    data: Data, fitted: Fitted, free: tuple[int, ...], choice: Choice, dropped: int, noise: float | None
-) -> SingleFit:
-    circuit = model.circuit_of(fitted.parameters[0])
+def _finish(data: Data, grown: Grown, choice: Choice, dropped: int, noise: float | None) -> SingleFit:
+    circuit, fitted = grown.circuit, grown.fitted
     z = data.r_ohm[0] + 1j * data.x_ohm[0]
     left = modes.leftover(data.f_hz[0], z, fitted.weight[0], circuit)
     used = Data(data.f_hz, data.r_ohm, data.x_ohm, fitted.weight, None)
@@ -231,12 +141,12 @@ def _finish(
     # neighbours that err alike tell less than they seem to: a first-order autoregression's variance is
     # (1 + ρ)/(1 − ρ) times as large
     stretch = (1 + lag) / (1 - lag) * max(1.0, (noise or 0.0) / max(scale, 1e-30)) ** 2
-    smallest = modes.floor(left, circuit, _overlap(_used(used), choice.window_hz), max(scale, noise or 0.0))
+    smallest = modes.floor(left, circuit, _overlap(growth.used_hz(used), choice.window_hz), max(scale, noise or 0.0))
     return SingleFit(
         FitStatus.OK,
         "resonance found and resolved",
-        fitted.parameters[0],
-        free,
+        grown.parameters,
+        grown.free,
         fitted.covariance[0] * stretch,
         scale,
         float(fitted.relative_rms[0]),
@@ -246,6 +156,7 @@ def _finish(
         dropped,
         int(data.weight.sum() - fitted.weight.sum()),
         lag,
+        None if growth.has_slope(grown) else growth.with_least_slope(used, grown),
     )
 
 
@@ -260,7 +171,8 @@ def _lag_one(fitted: Fitted) -> float:
 
 
 def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:
-    """Parameters again: first with the inner share of the points' span, then for each of ``impedances`` (same points).
+    """Parameters again: with the inner share of the points' span, with the background's slope from elsewhere, then
+    for each of ``impedances`` (same points).
 
     One batch, begun from the fit itself. A row that does not converge comes back as the fit's own parameters.
     """
@@ -270,12 +182,14 @@ def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:
     reach = max(used[-1] - fs, fs - used[0]) * _INNER
     inner = data.weight[0] * (np.abs(data.f_hz[0] - fs) <= reach)
     z0 = data.r_ohm[0] + 1j * data.x_ohm[0]
-    z = np.stack([z0, *impedances])
-    weight = np.stack([inner, *([data.weight[0]] * len(impedances))])
+    z = np.stack([z0, z0, *impedances])
+    weight = np.stack([inner, *([data.weight[0]] * (len(impedances) + 1))])
     f = np.repeat(data.f_hz, len(z), axis=0)
     begin = np.repeat(fit.parameters[None, :], len(z), axis=0)
+    elsewhere = growth.steeper(fit.parameters, fit.free)
+    begin[1] = fit.parameters if elsewhere is None else elsewhere
     again = trial.fit_branches(model.data_of(f, z, weight), begin, fit.free, rejecting=False)
-    near = np.abs(again.parameters - fit.parameters).max(axis=-1) < 1.0
+    near = np.abs(again.parameters - begin).max(axis=-1) < 1.0
     fine = again.converged & near & (weight.sum(axis=-1) > fit.parameters.size)
     return [row if ok else fit.parameters for row, ok in zip(again.parameters, fine, strict=True)]
 

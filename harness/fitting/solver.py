@@ -113,6 +113,12 @@ def covariance(normal: Floats) -> Floats:
     return np.asarray(out / (scale[:, :, None] * scale[:, None, :]))
 
 
+def full_step(value: Floats, slopes: list[Floats]) -> tuple[Floats, Floats]:
+    """The undamped Gauss–Newton step ``(B, F)``, of any length, and the inverse of JᵀJ ``(B, F, F)``."""
+    _, gradient, normal = _normal(value, slopes)
+    return _step(normal, gradient, np.zeros(len(value)), limit=np.inf), covariance(normal)
+
+
 def _normal(value: Floats, slopes: list[Floats]) -> tuple[Floats, Floats, Floats]:
     """Cost, gradient and JᵀJ by sums over the last axis, pair by pair."""
     with np.errstate(over="ignore", invalid="ignore"):
@@ -134,7 +140,7 @@ def _ratio(held: Floats, weight: Floats) -> Floats:
     return np.asarray(np.where(weight > 0, held / np.where(weight > 0, weight, 1.0), 1.0))
 
 
-def _step(normal: Floats, gradient: Floats, damping: Floats) -> Floats:
+def _step(normal: Floats, gradient: Floats, damping: Floats, limit: float = _STEP_LIMIT) -> Floats:
     diagonal = np.einsum("bii->bi", normal)
     scale = np.sqrt(np.where(diagonal > 0, diagonal, 1.0))
     scaled = normal / (scale[:, :, None] * scale[:, None, :])
@@ -144,7 +150,7 @@ def _step(normal: Floats, gradient: Floats, damping: Floats) -> Floats:
     right = np.where(sound[:, None], gradient / scale, 0.0)
     step = -np.linalg.solve(scaled, right[:, :, None])[:, :, 0] / scale
     longest = np.abs(step).max(axis=1, keepdims=True)
-    return np.asarray(step * np.minimum(1.0, _STEP_LIMIT / np.where(longest > 0, longest, 1.0)))
+    return np.asarray(step * np.minimum(1.0, limit / np.where(longest > 0, longest, 1.0)))
 
 
 def _is_small(step: Floats, cost: Floats, normal: Floats, tolerance: float) -> NDArray[np.bool_]:

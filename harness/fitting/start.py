@@ -6,6 +6,7 @@ Rows ``(B, N)`` with frequencies rising. Dropped points have weight 0.
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from harness.fitting.model import Data
 from harness.records import Floats
@@ -67,8 +68,13 @@ def _static(data: Data, g: Floats, b: Floats) -> tuple[Floats, Floats]:
     """C (farad) and tan δ that suit the rest, by medians, so that the resonance itself does not count."""
     omega = 2 * np.pi * data.f_hz
     kept = data.weight > 0
-    c = np.nanmedian(np.where(kept, b / omega, np.nan), axis=-1)
-    size = np.nanmedian(np.where(kept, np.hypot(g, b) / omega, np.nan), axis=-1)
-    c = np.maximum(c, 0.05 * size + 1e-18)
-    loss = np.nanmedian(np.where(kept, g / omega, np.nan), axis=-1) / c
-    return c, np.clip(loss, 0.0, 0.5)
+    size = median(np.hypot(g, b) / omega, kept)
+    c = np.maximum(median(b / omega, kept), 0.05 * size + 1e-18)
+    return c, np.clip(median(g / omega, kept) / c, 0.0, 0.5)
+
+
+def median(values: Floats, kept: NDArray[np.bool_]) -> Floats:
+    """Median ``(B,)`` of each row's ``kept`` values, the upper one of two; infinite where a row keeps none."""
+    ranked = np.sort(np.where(kept, values, np.inf), axis=-1)
+    middle = kept.sum(axis=-1) // 2
+    return np.asarray(np.take_along_axis(ranked, np.minimum(middle, values.shape[-1] - 1)[:, None], axis=-1)[:, 0])

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from harness.fitting import model, solver
+from harness.fitting import model, solver, start
 from harness.fitting.model import Data
 from harness.records import Floats
 
@@ -125,7 +125,7 @@ def _lone_wild(value: Floats, weight: Floats) -> NDArray[np.bool_]:
     size = np.sqrt(value[:, :n] ** 2 + value[:, n:] ** 2)
     if n < 8:
         return np.zeros(weight.shape, dtype=bool)
-    typical = np.nanmedian(np.where(weight > 0, size, np.nan), axis=-1, keepdims=True)
+    typical = start.median(size, weight > 0)[:, None]
     padded = np.pad(size, ((0, 0), (1, 1)))
     beside = np.maximum(padded[:, :-2], padded[:, 2:])
     return np.asarray((size > WILD * np.maximum(typical, 1e-12)) & (size > 4 * beside) & (weight > 0))

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
@@ -38,16 +39,25 @@ class Wanted:
 
 @dataclass(frozen=True, slots=True)
 class Shifts:
-    """Refitted parameters by the name of what was changed, e.g. {"model": …, "correction rs": …}."""
+    """Refitted parameters by the name of what was changed, e.g. {"span": …, "correction rs": …}.
+
+    The model's are "span" (other points) and "place" (the background's slope from elsewhere), each shift taken as the
+    half-width of a rectangle, and "background" (under a slope of one standard uncertainty, which cannot be negative:
+    the standard deviation of half a normal distribution).
+    """
 
     by_name: Mapping[str, Floats]
-    model_share: float = 1 / np.sqrt(3)  # a refit's shift taken as the half-width of a rectangle
 
 
-_COUPLINGS: dict[str, tuple[str, Callable[[Floats, Floats], Floats]]] = {
-    "thickness": ("kt", coupling.kt),
-    "length": ("k31", coupling.k31),
-    "length-33": ("k33", coupling.k33),
+_MODEL_SHARES = {"span": 1 / np.sqrt(3), "place": 1 / np.sqrt(3), "background": np.sqrt(1 - 2 / np.pi)}
+_LEAST_KNOWN_C0 = 0.3  # relative u of C0 beyond which the sweep has not reached what lies beside the resonance
+_BESIDE = ("fp", "fn", "fa", "zn", "c0", "tan_delta", "m", "keff", "kp", "kt", "k31", "k33", "phase_max")
+
+
+_COUPLINGS: dict[str, dict[str, Callable[[Floats, Floats], Floats]]] = {
+    "thickness": {"kt": coupling.kt},
+    "length": {"k31": coupling.k31},
+    "length-33": {"k33": coupling.k33},
 }
 
 
@@ -74,12 +84,14 @@ def characteristics(circuit: Circuit, wanted: Wanted) -> dict[str, Floats]:
         "keff": coupling.keff(fs, fp),
     }
     out |= _extremes(element, fs, fp, q)
-    if wanted.kind in _COUPLINGS:
-        name, formula = _COUPLINGS[wanted.kind]
-        out[name] = formula(fs, fp)
+    return out | {name: formula(fs, fp) for name, formula in _formulas(wanted).items()}
+
+
+def _formulas(wanted: Wanted) -> dict[str, Callable[[Floats, Floats], Floats]]:
+    """The coupling factors that belong to the mode, by id."""
     if wanted.kind == "radial" and wanted.poisson is not None:
-        out["kp"] = coupling.kp(fs, fp, wanted.poisson)
-    return out
+        return {"kp": partial(coupling.kp, poisson=wanted.poisson)}
+    return _COUPLINGS.get(wanted.kind or "", {})
 
 
 def _extremes(element: Circuit, fs: Floats, fp: Floats, q: Floats) -> dict[str, Floats]:
@@ -112,17 +124,10 @@ def with_uncertainty(
     u_f_relative: float,
 ) -> tuple[dict[str, Value], dict[str, dict[str, float]]]:
     """Values and budgets of one fitted circuit: ``parameters`` ``(P,)``, ``covariance`` of the ``free`` ones."""
-    names = list(shifts.by_name)
     steps = np.array([_step_of(parameters, k) for k in free])
-    moved = np.concatenate(
-        [
-            parameters[None, :],
-            np.stack([_bump(parameters, k, s) for k, s in zip(free, steps, strict=True)]),
-            np.stack([_bump(parameters, k, -s) for k, s in zip(free, steps, strict=True)]),
-        ]
-    )
-    found = characteristics(model.circuit_of(moved), wanted)
-    shifted = [characteristics(model.circuit_of(shifts.by_name[n][None, :]), wanted) for n in names]
+    found = characteristics(model.circuit_of(_moved(parameters, free, steps)), wanted)
+    shifted = _shifted(parameters.size, shifts, wanted)
+    definition = _definition(found, wanted)
     n = len(free)
     values: dict[str, Value] = {}
     budgets: dict[str, dict[str, float]] = {}
@@ -133,14 +138,60 @@ def with_uncertainty(
             continue
         slope = (column[1 : n + 1] - column[n + 1 :]) / (2 * steps)
         budget = {"fit": float(np.sqrt(max(slope @ covariance @ slope, 0.0))) if np.isfinite(slope).all() else np.nan}
-        for name, other in zip(names, shifted, strict=True):
-            share = shifts.model_share if name == "model" else 1.0
-            budget[name] = abs(float(other[key][0]) - value) * share
+        for name, other in shifted.items():
+            shift = abs(other[key] - value)
+            if name in _MODEL_SHARES:
+                budget["model"] = float(np.hypot(budget.get("model", 0.0), shift * _MODEL_SHARES[name]))
+            else:
+                budget[name] = shift
+        budget["model"] = float(np.hypot(budget.get("model", 0.0), definition.get(key, 0.0)))
         budget |= accuracy(key, value, u_z_relative, u_f_relative)
         budgets[key] = {name: part for name, part in budget.items() if part > 0}
         total = float(np.sqrt(sum(part**2 for part in budget.values())))
         values[key] = Value(value, total if np.isfinite(total) else None, unit)
-    return values, budgets
+    return _reached(values), budgets
+
+
+def _moved(parameters: Floats, free: Sequence[int], steps: Floats) -> Floats:
+    """The parameters, then with each free one a step up, then each a step down: ``(1 + 2F, P)``."""
+    up = [_bump(parameters, k, s) for k, s in zip(free, steps, strict=True)]
+    down = [_bump(parameters, k, -s) for k, s in zip(free, steps, strict=True)]
+    return np.stack([parameters, *up, *down])
+
+
+def _shifted(size: int, shifts: Shifts, wanted: Wanted) -> dict[str, dict[str, float]]:
+    """Characteristics under each shift; circuits of one size are done in one go."""
+    out: dict[str, dict[str, float]] = {}
+    for alike in (True, False):
+        names = [name for name, p in shifts.by_name.items() if (p.size == size) is alike]
+        if names:
+            rows = np.stack([shifts.by_name[name] for name in names])
+            columns = characteristics(model.circuit_of(rows), wanted)
+            out |= {name: {key: float(c[k]) for key, c in columns.items()} for k, name in enumerate(names)}
+    return out
+
+
+def _reached(values: dict[str, Value]) -> dict[str, Value]:
+    """The values without those that hang on a capacitance which the sweep does not tell."""
+    c0 = values["c0"]
+    if c0.value is not None and c0.u is not None and c0.u < _LEAST_KNOWN_C0 * abs(c0.value):
+        return values
+    return {key: Value(None, None, value.unit) if key in _BESIDE else value for key, value in values.items()}
+
+
+def _definition(found: Mapping[str, Floats], wanted: Wanted) -> dict[str, float]:
+    """What "with losses removed" leaves open of fp and of the coupling: standard uncertainties by characteristic.
+
+    A pole at |f| = f₀ has its lossless frequency within f₀/(4Q²), by where the loss sits (|1 + j/Q|^½ ≈ 1 + 1/(4Q²));
+    likewise with tan δ. Taken as the half-width of a rectangle.
+    """
+    fs, fp = found["fs"][:1], found["fp"][:1]
+    open_share = (found["qm"][:1] ** -2 + found["tan_delta"][:1] ** 2) / (4 * np.sqrt(3))
+    moved = fp * (1 + open_share)
+    out = {"fp": moved - fp, "keff": coupling.keff(fs, moved) - coupling.keff(fs, fp)}
+    for name, formula in _formulas(wanted).items():
+        out[name] = formula(fs, moved) - formula(fs, fp)
+    return {name: abs(float(part[0])) for name, part in out.items() if np.isfinite(part[0])}
 
 
 def accuracy(key: str, value: float, u_z_relative: float, u_f_relative: float) -> dict[str, float]:
@@ -150,7 +201,10 @@ def accuracy(key: str, value: float, u_z_relative: float, u_f_relative: float) -
 
 
 def absent(values: Mapping[str, Value]) -> list[Caveat]:
-    """A caveat for each characteristic that the part does not have."""
+    """A caveat for each characteristic that the part does not have or that the sweep does not tell."""
+    if values["c0"].value is None:
+        text = "the points stay too near the resonance to tell the capacitance beside it, and what hangs on it"
+        return [Caveat("not-reached", key, text) for key in _BESIDE if key in values]
     texts = {
         "fr": "the phase never reaches zero at this figure of merit, so there is no fr",
         "fa": "the phase never reaches zero at this figure of merit, so there is no fa",

@@ -89,6 +89,7 @@ def view(
         "shape": svg.shape(mark, 64, MARKS[mark].ink) if mark else "",
         "sentence": lot_sentence(yields),
         "against": against,
+        "total": number("parts", yields.parts, str(yields.parts)),
         "tiles": _tiles(statistics),
         "stripe": svg.stripe(_verdicts(statistics)) if yields.parts else "",
         "yields": [
@@ -146,10 +147,11 @@ def _yield(key: str, title: str, share: Share, means: str) -> dict[str, Any]:
 def _reasons(statistics: LotStatistics) -> list[tuple[str, Markup, Number]]:
     found = statistics.yields.fail_reasons
     rows = []
-    for index, reason in enumerate(found):
+    for reason in found:
         text = phrase(reason.code, reason.characteristic)
         drawing = svg.bar(reason.count / found[0].count, f"{text}: {reason.count}")
-        rows.append((visible(text), drawing, number(f"fail_reasons.{index}.count", reason.count, str(reason.count))))
+        key = f"fail_reasons.{reason.characteristic}.{reason.code}"
+        rows.append((visible(text), drawing, number(key, reason.count, str(reason.count))))
     return rows
 
 

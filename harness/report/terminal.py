@@ -104,7 +104,8 @@ def _capabilities(statistics: LotStatistics, limits: LimitSet) -> RenderableType
     table = _table("", "unit", *right, "allowed", "Pp", "Ppk", right=right)
     required = requirements_by_key(limits)
     notes = []
-    for key, one in statistics.characteristics.items():
+    shown = {key: one for key, one in statistics.characteristics.items() if key in required}
+    for key, one in shown.items():
         needs = required.get(key)
         scale = scale_for(one.characteristic, needs, one.values)
         name = _name(one, needs)
@@ -112,8 +113,11 @@ def _capabilities(statistics: LotStatistics, limits: LimitSet) -> RenderableType
         table.add_row(name, scale.sign, str(one.n), *cells, _allowed(one, scale), _index(one.pp), _index(one.ppk))
         if one.note and needs is not None:
             notes.append(_plain(f"{name}: {one.note}", "dim"))
+    others = len(statistics.characteristics) - len(shown)
+    if others:
+        notes.append(Text(f"{others} more characteristics without limits: see --json, --csv or --html.", style="dim"))
     confidence = f"Limits of Pp and Ppk at {100 * statistics.confidence:g} %, for normally distributed values."
-    populations = dict.fromkeys(one.population for one in statistics.characteristics.values())
+    populations = dict.fromkeys(one.population for one in shown.values())
     return Group(table, *notes, *[_plain(f"Over: {one}.", "dim") for one in populations], Text(confidence, style="dim"))
 
 

@@ -26,16 +26,19 @@ def screen_lot(
 ) -> Iterator[Event]:
     """Screen parts until the source or the handler has no more, the lot must be held, or ``stopping`` says so.
 
-    Raises SetupError when the lot exists under other limits or no part could pass a requirement at this station's
-    uncertainty, StationError when the bench cannot be reopened.
+    Raises SetupError when the lot exists under other limits, when no part could pass a requirement at this station's
+    uncertainty, or when the handler cannot be told a grade, and then nothing is written; StationError when the bench
+    cannot be reopened or the handler does not take a verdict.
     """
     store, bench = station.store, station.bench
     refuse_empty_zones(job.limits, least_u(job.limits, bench.instrument, job.conditions))
+    bench.refuse_untellable(grade.name for grade in job.limits.grades)
+    store.open_lot(job.lot, job.limits, job.operator, job.clock())
     for written in store.close_interrupted(job.clock(), job.software):
         yield Interrupted(written)
-    lot = store.open_lot(job.lot, job.limits, job.operator, job.clock())
-    yield Ready(station.name, job.lot, lot.records, source.prompt)
-    watch, refused = LotWatch(job.limits.lot), 0
+    finals = {(one.serial, one.element): one.verdict for one in store.lot_summaries(job.lot) if one.final}
+    watch, refused = LotWatch(job.limits.lot, job.limits.requirements, finals), 0
+    yield Ready(station.name, job.lot, len(finals), source.prompt)
     for found in _serials(bench, store, job, source, stopping):
         if not isinstance(found, Serial):
             refused += isinstance(found, Refused)
@@ -73,19 +76,19 @@ def _ahead(
     refusal = _refusal(store, job, serial)
     if refusal is not None:
         return refusal
-    there = yield from _part(bench, stopping)
+    there = yield from _part(bench, source, f"Load part {serial.text}.", stopping)
     if there:
         return serial
-    return (
-        Wait.END if stopping() else Refused(serial.text, "the handler has no more parts; this serial was not measured.")
-    )
+    if stopping() or not bench.has_handler:
+        return Wait.END
+    return Refused(serial.text, "the handler has no more parts; this serial was not measured.")
 
 
 def _after(
     bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool]
 ) -> Generator[Event, None, Serial | Refused | Wait]:
     """The part comes first, then its code."""
-    there = yield from _part(bench, stopping)
+    there = yield from _part(bench, source, source.prompt, stopping)
     if not there:
         return Wait.END
     serial = yield from _code(bench, source, stopping)
@@ -102,8 +105,13 @@ def _after(
     return refusal
 
 
-def _part(bench: Bench, stopping: Callable[[], bool]) -> Generator[Event, None, bool]:
-    """Wait for the handler to bring a part (True), or to have no more (False), by return."""
+def _part(
+    bench: Bench, source: SerialSource, prompt: str, stopping: Callable[[], bool]
+) -> Generator[Event, None, bool]:
+    """Wait for a part, from the handler or by hand: True when it is there, False when there is no more, by return."""
+    if not bench.has_handler:
+        yield Waiting(prompt)
+        return source.confirm()
     told = False
     while not stopping():
         answer = bench.next_part(_TURN_S)
@@ -117,15 +125,23 @@ def _part(bench: Bench, stopping: Callable[[], bool]) -> Generator[Event, None, 
 
 def _code(bench: Bench, source: SerialSource, stopping: Callable[[], bool]) -> Generator[Event, None, Serial | Wait]:
     """The serial of the part in the fixture, by return; NOT_YET when a handler's part had no code in time."""
+    if bench.has_handler and source.asks:
+        yield Waiting(source.prompt)
     turns = 0
     while not stopping():
-        serial = source.next(_TURN_S)
+        try:
+            serial = source.next(_TURN_S)
+        except BenchFault as fault:
+            if fault.code != "bad-answer":
+                raise
+            yield BenchTrouble(fault.sentence())  # a torn or smudged code: another scan may be whole
+            serial = Wait.NOT_YET
         if serial is not Wait.NOT_YET:
             return serial
         turns += 1
         if bench.has_handler and turns * _TURN_S >= _SCAN_S:
             return Wait.NOT_YET
-        if turns == 1:
+        if bench.has_handler and turns == 1:
             yield Waiting(source.prompt)
     return Wait.END
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Generator, Mapping
+from collections.abc import Callable, Generator, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -27,7 +27,7 @@ from harness.records import (
     Sweep,
     Verdict,
 )
-from harness.run.events import BenchTrouble, Event, Measuring, Opened, Recorded
+from harness.run.events import BenchTrouble, Event, Measuring, Opened, Recorded, Refused
 from harness.store import Store
 
 Clock = Callable[[], str]
@@ -88,8 +88,23 @@ def attempt(
         final=judgement.verdict is not Verdict.NONE or last_try,
         at=job.clock(),
     )
-    yield Recorded(record, store.write_record(record, attempt_id))
+    written = store.write_record(record, attempt_id)
+    yield from _early_codes(bench, serial)
+    yield Recorded(record, written)
     return record
+
+
+def _early_codes(bench: Bench, serial: str) -> Iterator[Event]:
+    """Take no code scanned while this part was measured for the next part's: that one is not in the fixture yet."""
+    try:
+        codes = bench.early_codes()
+    except BenchFault as fault:
+        yield BenchTrouble(fault.sentence())
+        return
+    for code in codes:
+        if code.strip() != serial:
+            text = f"scanned while {serial} was measured. Scan it again once its part is in the fixture."
+            yield Refused(code, text)
 
 
 def _measure(bench: Bench, job: Job, serial: str, first: Plan) -> Generator[Event, None, Sweep]:

@@ -29,12 +29,17 @@ class Serial:
 
 class SerialSource(Protocol):
     """Gives the next part's serial. ``prompt`` tells the operator what the station waits for; ``ahead``: the serial
-    is known before the part is there."""
+    is known before the part is there; ``asks``: somebody must press Enter before ``next`` or ``confirm`` returns."""
 
     prompt: str
     ahead: bool
+    asks: bool
 
     def next(self, timeout_s: float) -> Serial | Wait: ...
+
+    def confirm(self) -> bool:
+        """Asked before each part where no handler brings it: is it in the fixture? False ends the lot."""
+        ...
 
 
 class FromScanner:
@@ -42,6 +47,7 @@ class FromScanner:
 
     prompt = "Load a part and scan its code."
     ahead = False
+    asks = False
 
     def __init__(self, bench: Bench) -> None:
         self._bench = bench
@@ -51,12 +57,16 @@ class FromScanner:
         text = (line or "").strip()
         return Serial(text, "scanned") if text else Wait.NOT_YET
 
+    def confirm(self) -> bool:
+        return True  # its code will say so
+
 
 class FromKeyboard:
     """Each line typed is one part; an empty line asks again, the end of input ends the lot."""
 
     prompt = "Load a part and type its serial, then Enter. Ctrl-D ends the lot."
     ahead = False
+    asks = True
 
     def __init__(self, read_line: Callable[[], str]) -> None:
         self._read_line = read_line
@@ -67,19 +77,31 @@ class FromKeyboard:
             return Wait.END
         return Serial(line.strip(), "typed") if line.strip() else Wait.NOT_YET
 
+    def confirm(self) -> bool:
+        return True  # its serial will say so
+
 
 class FromList:
-    """Serials known beforehand, in the order the parts come."""
+    """Serials known beforehand, in the order the parts come.
+
+    ``confirm`` is asked before each part where no handler brings it; its end of input ends the lot. Without it each
+    part is taken to be there when its turn comes.
+    """
 
     prompt = "Load the parts in the order of the list."
     ahead = True
 
-    def __init__(self, serials: Iterable[str]) -> None:
+    def __init__(self, serials: Iterable[str], confirm: Callable[[], str] | None = None) -> None:
         self._left = iter(tuple(serials))
+        self._confirm = confirm
+        self.asks = confirm is not None
 
     def next(self, timeout_s: float) -> Serial | Wait:
         text = next(self._left, None)
         return Wait.END if text is None else Serial(text, "file")
+
+    def confirm(self) -> bool:
+        return self._confirm is None or bool(self._confirm())
 
 
 class Numbered:
@@ -88,18 +110,24 @@ class Numbered:
     ``confirm`` is asked before each part where no handler brings it; its end of input ends the lot.
     """
 
-    prompt = "Load the next part of the tray, then Enter. Ctrl-D ends the lot."
     ahead = False
 
     def __init__(self, lot: str, tray: int, start: int, confirm: Callable[[], str] | None) -> None:
         self._lot, self._tray, self._k, self._confirm = lot, tray, start, confirm
+        self.asks = confirm is not None
+        self.prompt = (
+            "Load the next part of the tray, then Enter. Ctrl-D ends the lot."
+            if self.asks
+            else "Parts are numbered in the order they come."
+        )
 
     def next(self, timeout_s: float) -> Serial | Wait:
-        if self._confirm is not None and not self._confirm():
-            return Wait.END
         serial = numbered(self._lot, self._tray, self._k)
         self._k += 1
         return Serial(serial, "auto")
+
+    def confirm(self) -> bool:
+        return self._confirm is None or bool(self._confirm())
 
 
 def numbered(lot: str, tray: int, k: int) -> str:
@@ -118,7 +146,7 @@ def read_list(text: str, file: str, pattern: str | None) -> tuple[str, ...]:
     """
     mistakes: list[Mistake] = []
     seen: dict[str, int] = {}
-    for number, line in enumerate(text.splitlines(), 1):
+    for number, line in enumerate(text.removeprefix("\ufeff").split("\n"), 1):
         serial = line.strip()
         if not serial or serial.startswith("#"):
             continue
@@ -141,8 +169,8 @@ def read_list(text: str, file: str, pattern: str | None) -> tuple[str, ...]:
 
 def pattern_fault(serial: str, pattern: str | None) -> str | None:
     """A sentence when ``serial`` does not match the part number's pattern or cannot be a serial at all."""
-    if any(ord(c) < 32 or ord(c) == 127 for c in serial) or len(serial) > 80:
-        return f"serial {serial[:80]!r} has control characters or is longer than 80 characters."
+    if not serial.isprintable() or len(serial) > 80:
+        return f"serial {ascii(serial[:80])} has characters that cannot be printed, or more than 80."
     if pattern is not None and not re.fullmatch(pattern, serial):
         return f"serial '{serial}' does not match this part number's pattern {pattern}."
     return None

@@ -52,18 +52,26 @@ class Fixture(Block):
 
     name: Name = Field(default="fixture", description="Name of the fixture or nest.")
     series_resistance: Annotated[float, r.quantity("ohm")] = Field(default=0.0, description="Leads and contacts.")
-    u_series_resistance: Annotated[float, r.quantity("ohm")] = Field(default=0.0, description="Its uncertainty.")
+    u_series_resistance: Annotated[float, r.quantity("ohm", least=0.0)] = Field(
+        default=0.0, description="Its uncertainty."
+    )
     series_inductance: Annotated[float, r.quantity("H")] = Field(default=0.0, description="Leads.")
-    u_series_inductance: Annotated[float, r.quantity("H")] = Field(default=0.0, description="Its uncertainty.")
+    u_series_inductance: Annotated[float, r.quantity("H", least=0.0)] = Field(
+        default=0.0, description="Its uncertainty."
+    )
     stray_capacitance: Annotated[float, r.quantity("F")] = Field(default=0.0, description="Across the contacts.")
-    u_stray_capacitance: Annotated[float, r.quantity("F")] = Field(default=0.0, description="Its uncertainty.")
+    u_stray_capacitance: Annotated[float, r.quantity("F", least=0.0)] = Field(
+        default=0.0, description="Its uncertainty."
+    )
 
 
 class Surroundings(Block):
     """What the parts are measured at, where no thermometer says so."""
 
     temperature: Annotated[float, r.quantity("degC")] | None = Field(default=None, description="Of the parts.")
-    u_temperature: Annotated[float, r.quantity("K")] = Field(default=0.5, description="Its standard uncertainty.")
+    u_temperature: Annotated[float, r.quantity("K", least=0.0)] = Field(
+        default=0.5, description="Its standard uncertainty."
+    )
 
 
 class StoreBlock(Block):

@@ -81,6 +81,10 @@ def capability(
     found = [attempt.values.get(characteristic, (None, None))[0] for attempt in valid]
     values = np.array([value for value in found if value is not None and math.isfinite(value)], dtype=np.float64)
     mean, sd = _mean(values), _sd(values)
+    pp, ppk = (
+        _pp(values.size, sd, least, greatest, confidence),
+        _ppk(values.size, mean, sd, least, greatest, confidence),
+    )
     return Capability(
         characteristic=characteristic,
         element=element,
@@ -93,10 +97,10 @@ def capability(
         min=float(values.min()) if values.size else None,
         max=float(values.max()) if values.size else None,
         median=float(np.median(values)) if values.size else None,
-        pp=_pp(values.size, sd, least, greatest, confidence),
-        ppk=_ppk(values.size, mean, sd, least, greatest, confidence),
+        pp=pp,
+        ppk=ppk,
         population=_population(len(parts), len(valid), int(values.size)),
-        note=_note(values, sd, least, greatest),
+        note=_note(values, sd, least, greatest, pp, ppk),
     )
 
 
@@ -154,7 +158,7 @@ def _pp(n: int, sd: float | None, least: float | None, greatest: float | None, c
     if not sd or least is None or greatest is None:
         return NO_INDEX
     value = (greatest - least) / (6.0 * sd)
-    return Index(value, *pp_limits(value, n, confidence))
+    return _stated(value, pp_limits(value, n, confidence))
 
 
 def _ppk(
@@ -167,7 +171,12 @@ def _ppk(
     if not room:
         return NO_INDEX
     value = min(room) / (3.0 * sd)
-    return Index(value, *ppk_limits(value, n, confidence))
+    return _stated(value, ppk_limits(value, n, confidence))
+
+
+def _stated(value: float, limits: tuple[float, float]) -> Index:
+    """An index beyond what a float holds, from a spread next to nothing, is none."""
+    return Index(value, *limits) if all(map(math.isfinite, (value, *limits))) else NO_INDEX
 
 
 # ── in words ─────────────────────────────────────────────────────────────────────────────────
@@ -183,7 +192,9 @@ def _population(parts: int, valid: int, with_value: int) -> str:
     return f"{head}; left out: {', '.join(left_out)}" if left_out else head
 
 
-def _note(values: Floats, sd: float | None, least: float | None, greatest: float | None) -> str | None:
+def _note(
+    values: Floats, sd: float | None, least: float | None, greatest: float | None, pp: Index, ppk: Index
+) -> str | None:
     """Why a number is missing, in a sentence."""
     if values.size == 0:
         return "No part has a value."
@@ -193,7 +204,10 @@ def _note(values: Floats, sd: float | None, least: float | None, greatest: float
         return f"All {values.size} values are equal, so no capability can be stated."
     if least is None and greatest is None:
         return "No limits are set, so there is no capability."
-    if least is None or greatest is None:
+    two_sided = least is not None and greatest is not None
+    if ppk.value is None or (two_sided and pp.value is None):
+        return f"The {values.size} values differ by next to nothing, so no capability can be stated."
+    if not two_sided:
         side = "highest" if least is None else "lowest"
         return f"Only a {side} allowed value is set: Ppk is of that side, Pp would need both."
     return None

@@ -88,13 +88,23 @@ def to_json(statistics: LotStatistics, lot: str, limits: LimitSet) -> dict[str, 
         "no_verdict": yields.no_verdict,
         "first_pass_yield": _share(yields.first_pass),
         "final_yield": _share(yields.final),
-        "fail_reasons": [
-            {"characteristic": reason.characteristic, "code": reason.code, "count": reason.count}
-            for reason in yields.fail_reasons
-        ],
+        "fail_reasons": _fail_reasons(yields),
         "grades": dict(yields.grades),
         "characteristics": {name: _capability(one) for name, one in statistics.characteristics.items()},
     }
+
+
+def _fail_reasons(yields: Yields) -> list[dict[str, Any]]:
+    """One entry a characteristic, the most frequent first, with its codes and their counts."""
+    codes: dict[str | None, dict[str, int]] = {}
+    for reason in yields.fail_reasons:
+        codes.setdefault(reason.characteristic, {})[reason.code] = reason.count
+    entries = [{"characteristic": name, "count": sum(found.values()), "codes": found} for name, found in codes.items()]
+    return sorted(entries, key=_count_of, reverse=True)
+
+
+def _count_of(entry: Mapping[str, Any]) -> int:
+    return int(entry["count"])
 
 
 def _share(share: Share) -> dict[str, float | None]:

@@ -78,7 +78,10 @@ def lot(parts: int = 40) -> list[Attempt]:
         elif step == 2:
             attempts += [attempt(serial, "no verdict", final=False), attempt(serial, "no verdict", 2)]
         elif step == 3:
-            attempts += [attempt(serial, "no verdict", final=False), attempt(serial, "pass", 2, values=values, grade="L")]
+            attempts += [
+                attempt(serial, "no verdict", final=False),
+                attempt(serial, "pass", 2, values=values, grade="L"),
+            ]
         else:
             attempts.append(attempt(serial, values=values, grade="L" if values["fs"] < 1650e3 else "H"))
     return attempts

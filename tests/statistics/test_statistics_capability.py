@@ -164,6 +164,13 @@ def test_a_small_spread_on_a_large_value_is_not_lost():
     assert of([1e9, 1e9 + 1e-3, 1e9 - 1e-3]).sd == pytest.approx(1e-3, rel=1e-4)
 
 
+def test_a_spread_next_to_nothing_states_no_capability():
+    """An index that no float holds is None with a sentence, never infinity."""
+    found = of([0.0, 5e-324, 1.5e-323], -1e9, 1e9)
+    assert found.pp == found.ppk == (None, None, None)
+    assert "next to nothing" in found.note
+
+
 @pytest.mark.parametrize("factor", [1e-200, 1e200])
 def test_extreme_numbers_neither_vanish_nor_overflow(factor):
     """The deviation of very small and very large values is right, without a warning."""

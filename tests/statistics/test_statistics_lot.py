@@ -129,7 +129,7 @@ def test_json_gives_the_lots_numbers():
     """Counts, reasons, grades and moments of a lot of three, reckoned by hand."""
     form = to_json(summarise(LOT, limits()), "LOT-7", limits())
     assert (form["parts"], form["pass"], form["fail"], form["no_verdict"]) == (3, 2, 1, 0)
-    assert form["fail_reasons"] == [{"characteristic": "fs", "code": "above-max", "count": 1}]
+    assert form["fail_reasons"] == [{"characteristic": "fs", "count": 1, "codes": {"above-max": 1}}]
     assert form["grades"] == {"M": 2}
     qm = form["characteristics"]["qm"]
     assert (qm["n"], qm["mean"], qm["sd"], qm["min"], qm["max"], qm["median"]) == (3, 200.0, 10.0, 190.0, 210.0, 200.0)
