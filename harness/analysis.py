@@ -13,7 +13,7 @@ import numpy as np
 
 from harness.characteristics import CHARACTERISTICS
 from harness.correction import fixture
-from harness.fitting import model, single, values
+from harness.fitting import growth, model, peak, single, values
 from harness.fitting.single import Choice, SingleFit
 from harness.judging.judge import judge
 from harness.records import (
@@ -33,7 +33,7 @@ from harness.records import (
 )
 
 NO_FIXTURE = Correction()
-_SHAPE_ONLY = ("fs", "fp", "bandwidth", "qm", "q_half_power", "unwanted_f")
+_BOTH_PORTS_OHM = 100.0  # what a transmission log is read with: a part in series between two 50 ohm ports
 _SINGLE_SIDED_95 = 1.645
 
 
@@ -43,7 +43,7 @@ def analyse(sweep: Sweep, limits: LimitSet, correction: Correction = NO_FIXTURE)
     choice = Choice(mode.search_hz, branches=mode.branches, span=mode.span)
     fit = _fit(sweep, correction, choice, values.Wanted(mode.kind, mode.poisson))
     if fit.status is FitStatus.OK:
-        fit = replace(fit, values={**fit.values, **_low_frequency(sweep, correction, _at_hz(limits))})
+        fit = replace(fit, values={**fit.values, **_low_frequency(sweep, correction, low_frequency_hz(limits))})
     readings = tuple(_corrected(reading, correction) for reading in sweep.readings)
     first = None if sweep.z_ohm.size == 0 else Reading("first", float(sweep.f_hz[0]), complex(sweep.z_ohm[0]))
     judgement = judge(
@@ -64,8 +64,10 @@ def fit_log(sweep: Sweep, search_hz: tuple[float, float] | None = None) -> Fit:
     """
     finite = sweep.f_hz[np.isfinite(sweep.f_hz)]
     whole = (float(finite.min()), float(finite.max())) if finite.size else (0.0, 0.0)
-    choice = Choice(search_hz or whole, choose_series_resistance=sweep.absolute)
-    return _fit(sweep, NO_FIXTURE, choice, values.Wanted())
+    window = search_hz or whole
+    if not sweep.absolute:
+        return _shape_only(sweep, window)
+    return _fit(sweep, NO_FIXTURE, Choice(window, choose_series_resistance=True), values.Wanted())
 
 
 def _fit(sweep: Sweep, correction: Correction, choice: Choice, wanted: values.Wanted) -> Fit:
@@ -82,9 +84,6 @@ def _fit(sweep: Sweep, correction: Correction, choice: Choice, wanted: values.Wa
     caveats = [*_data_caveats(found), *_model_caveats(found, sweep), *values.absent(numbers), *extra_caveats]
     caveats += _extrapolated(found, numbers)
     numbers |= extra
-    if not sweep.absolute:
-        numbers, told = _shape_only(numbers)
-        caveats.append(told)
     used = found.data.f_hz[0][found.data.weight[0] > 0]
     return Fit(
         FitStatus.OK,
@@ -116,8 +115,9 @@ def _shifts(sweep: Sweep, found: SingleFit, z: Complexes, correction: Correction
 
 def _modes(found: SingleFit) -> tuple[Mode, ...]:
     circuit = model.circuit_of(found.parameters)
+    held = growth.held_branches(found.parameters, found.free)
     rows = zip(circuit.f_hz, circuit.q, circuit.g_s, strict=True)
-    return tuple(Mode(float(f), float(q), float(g), k == 0) for k, (f, q, g) in enumerate(rows))
+    return tuple(Mode(float(f), float(q), float(g), k == 0) for k, (f, q, g) in enumerate(rows) if k not in held)
 
 
 def _unwanted(
@@ -146,7 +146,7 @@ def _unwanted(
     return {"unwanted_g": Value(ratio, u_ratio, "1"), "unwanted_f": Value(f, u_f, "Hz")}, []
 
 
-def _at_hz(limits: LimitSet) -> float | None:
+def low_frequency_hz(limits: LimitSet) -> float | None:
     """The frequency at which the limit file wants the low-frequency capacitance, if it does."""
     asked = [r.at_hz for r in limits.requirements if r.at_hz is not None]
     return asked[0] if asked else None
@@ -156,7 +156,7 @@ def _low_frequency(sweep: Sweep, correction: Correction, at_hz: float | None) ->
     """Capacitance and loss from the contact reading before the sweep, as a parallel C and tan δ."""
     near = [
         r for r in sweep.readings
-        if r.stage == "contact before" and (at_hz is None or abs(r.f_hz / at_hz - 1) < 0.01)
+        if r.stage in ("contact before", "low-frequency") and (at_hz is None or abs(r.f_hz / at_hz - 1) < 0.01)
     ]  # fmt: skip
     if not near:
         return {}
@@ -176,10 +176,26 @@ def _corrected(reading: Reading, correction: Correction) -> Reading:
     return replace(reading, z_ohm=complex(z[0]))
 
 
-def _shape_only(numbers: dict[str, Value]) -> tuple[dict[str, Value], Caveat]:
-    kept = {k: v if k in _SHAPE_ONLY else Value(None, None, v.unit) for k, v in numbers.items()}
-    text = "the log has no usable absolute level: frequencies and bandwidths only, impedance is not to be had from it"
-    return kept, Caveat("no-level", None, text)
+def _shape_only(sweep: Sweep, window_hz: tuple[float, float]) -> Fit:
+    """A log whose level means nothing (transmission in an unknown fixture): where the peak lies and how wide it is."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        transmission = np.asarray(_BOTH_PORTS_OHM / (sweep.z_ohm + _BOTH_PORTS_OHM))
+    found = peak.fit_peak(sweep.f_hz, transmission, window_hz)
+    if found.status is not FitStatus.OK:
+        return Fit(found.status, found.message)
+    bandwidth = found.f_hz / found.q
+    u_f = float(np.hypot(found.u_f_hz, found.f_hz * sweep.u_f_relative))
+    numbers = {
+        "fs": Value(found.f_hz, u_f, "Hz"),
+        "qm": Value(found.q, found.u_q, "1"),
+        "bandwidth": Value(bandwidth, bandwidth * found.u_q / found.q, "Hz"),
+    }
+    text = (
+        "the log has no usable absolute level: frequency and bandwidth only, as loaded by the measuring ports; "
+        "impedance is not to be had from it"
+    )
+    residual = Residual(found.misfit, found.dof)
+    return Fit(FitStatus.OK, found.message, numbers, (), residual, (Caveat("no-level", None, text),), {}, found.span_hz)
 
 
 def _data_caveats(found: SingleFit) -> list[Caveat]:
@@ -217,4 +233,7 @@ def _extrapolated(found: SingleFit, numbers: dict[str, Value]) -> list[Caveat]:
             sign = CHARACTERISTICS[key].sign
             text = f"{sign} lies outside the points used ({used[0]:.6g} to {used[-1]:.6g} Hz) and is extrapolated"
             out.append(Caveat("extrapolated", key, text))
+    if any(caveat.characteristic == "fp" for caveat in out):
+        text = "it follows from fp, which is extrapolated"
+        out += [Caveat("extrapolated", key, text) for key in ("keff", "kp", "kt", "k31", "k33") if key in numbers]
     return out

@@ -73,9 +73,8 @@ def _traceability(records: list[StoredRecord]) -> dict[str, str]:
         for i in record.instruments:
             said["Instrument"][f"{i.maker} {i.model}, serial {i.serial}, firmware {i.firmware} ({i.dialect})"] = None
         c = record.correction
-        said["Fixture"][
-            f"{c.fixture}: {format_si(c.rs_ohm, 'ohm')}, {format_si(c.ls_h, 'H')} in series, {format_si(c.cp_f, 'F')} across"
-        ] = None
+        series = f"{format_si(c.rs_ohm, 'ohm')}, {format_si(c.ls_h, 'H')} in series"
+        said["Fixture"][f"{c.fixture}: {series}, {format_si(c.cp_f, 'F')} across"] = None
         said["Software"][", ".join(f"{name} {version}" for name, version in record.software.items())] = None
         said["Operator"][record.opening.operator] = None
     first, last = records[0], records[-1]

@@ -83,7 +83,7 @@ class Conditions:
 class Reading:
     """One impedance at one frequency, taken beside the sweep (contact check, first frequency again).
 
-    ``stage`` is "contact before", "contact after" or "repeat".
+    ``stage`` is "contact before", "contact after", "low-frequency" or "repeat".
     """
 
     stage: str
@@ -174,7 +174,8 @@ class Fit:
     """What one sweep says: status with a sentence, every characteristic by id, modes, misfit, caveats.
 
     ``values`` is empty unless the status is ok. ``budget`` holds per characteristic the contributions to its
-    standard uncertainty by name ("fit", "model", "instrument", "frequency", "correction", "temperature", "ageing").
+    standard uncertainty by name ("fit", "model", "instrument", "frequency", "correction rs", …). What referring to the
+    reference temperature and age adds is in the judgement's values, not here.
     """
 
     status: FitStatus

@@ -5,7 +5,7 @@ StationError, during a part as a BenchFault, which is that part's no verdict. To
 station file in ``station``, its opening here.
 """
 
-from harness.bench.bench import Bench, BenchFault
+from harness.bench.bench import Bench, BenchFault, check
 from harness.bench.devices import Device, Devices
 
-__all__ = ["Bench", "BenchFault", "Device", "Devices"]
+__all__ = ["Bench", "BenchFault", "Device", "Devices", "check"]

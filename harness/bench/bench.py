@@ -84,7 +84,7 @@ class Bench:
         return self._handler is not None
 
     def sweep(self, plan: Plan) -> tuple[Floats, Complexes]:
-        """Measure a plan: frequencies as read back and impedances at the instrument's terminals, in the plan's order."""
+        """Measure a plan: frequencies as read back and impedances at the meter's terminals, in the plan's order."""
         with _working():
             trace = self._meter.sweep(plan.f_hz, plan.drive_v)
         return trace.f_hz, trace.z_ohm
@@ -141,6 +141,12 @@ class Bench:
         for device in (self._handler, self._scanner, self._meter):
             if device is not None:
                 device.close()
+
+
+def check(devices: Devices) -> None:
+    """Raise SetupError for a meter's resource or dialect that is wrong. Opens nothing."""
+    with _starting():
+        ScpiMeter(devices.meter.resource, devices.meter.dialect)
 
 
 def _instrument(identity: Identity) -> Instrument:

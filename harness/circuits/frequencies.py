@@ -4,8 +4,8 @@ Definitions as in IEEE Std 176-1987 §6 and IEEE Std 177-1966 (cited from memory
 and tested here): fs greatest conductance of the wanted branch; fp pole of Z with losses removed; fm, fn least
 and greatest |Z|; fr, fa zero susceptance, which exist only where M ≥ 1 + √(1 + 1/r), r = C0/C1.
 
-All work on arrays of circuits ``S``, so that an uncertainty by differences costs one pass. Roots are
-bracketed on a grid of the first circuit and then closed in on for all: the others must lie close to it.
+All work on arrays of circuits ``S``, so that an uncertainty by differences costs one pass. Each circuit's roots are
+bracketed on a grid of its own levels, then closed in on together.
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ from harness.circuits import resonator
 from harness.circuits.resonator import Circuit
 from harness.records import Complexes, Floats
 
+_GRID, _FINE_GRID = 401, 1601
 _MOST_STEPS = 100
 _RESOLUTION = 4 * np.finfo(np.float64).eps
 
@@ -81,27 +82,22 @@ def _interpolated(a: Floats, b: Floats, c: Floats, fa: Floats, fb: Floats, fc: F
 
 def extremum_hz(circuit: Circuit, low_hz: float, high_hz: float, *, greatest: bool) -> Floats:
     """Frequency of greatest (else least) |Z| inside a range, shape ``S``; NaN where it lies on the range's edge."""
-    f = np.linspace(low_hz, high_hz, 4001)
-    level = np.abs(resonator.impedance(_first(circuit), f))
-    k = int(np.argmax(level) if greatest else np.argmin(level))
-    if k in (0, f.size - 1):
-        return np.full(circuit.c_f.shape, np.nan)
-    return _root_between(lambda x: _slope(circuit, x), circuit, f[k - 1], f[k + 1])
+    f = np.linspace(low_hz, high_hz, _GRID)
+    level = np.abs(resonator.impedance(circuit, f))
+    k = np.asarray((level if greatest else -level).argmax(axis=-1))
+    inner = np.clip(k, 1, f.size - 2)
+    found = root(lambda x: _slope(circuit, x), f[inner - 1], f[inner + 1])
+    return np.where(k == inner, found, np.nan)
 
 
 def zero_phase_hz(circuit: Circuit, low_hz: float, high_hz: float, *, last: bool) -> Floats:
     """First (else last) frequency in a range where Im Z crosses zero, shape ``S``; NaN where it does not."""
-    f = np.linspace(low_hz, high_hz, 4001)
-    x = resonator.impedance(_first(circuit), f).imag
-    crossings = np.flatnonzero(np.sign(x[:-1]) * np.sign(x[1:]) < 0)
-    if crossings.size == 0:
-        return np.full(circuit.c_f.shape, np.nan)
-    # two cells beyond the bracket, so that neighbouring circuits' roots lie inside too, and only them
-    k = int(crossings[-1 if last else 0])
-    if np.count_nonzero(np.abs(crossings - k) <= 5) > 1:
-        return np.full(circuit.c_f.shape, np.nan)
-    low, high = f[max(k - 2, 0)], f[min(k + 3, f.size - 1)]
-    return _root_between(lambda g: _impedance_at(circuit, g).imag, circuit, low, high)
+    f = np.linspace(low_hz, high_hz, _FINE_GRID)
+    sign = np.sign(resonator.impedance(circuit, f).imag)
+    crosses = sign[..., :-1] * sign[..., 1:] < 0
+    k = f.size - 2 - crosses[..., ::-1].argmax(axis=-1) if last else crosses.argmax(axis=-1)
+    found = root(lambda g: _impedance_at(circuit, g).imag, f[k], f[k + 1])
+    return np.where(crosses.any(axis=-1), found, np.nan)
 
 
 def half_power_hz(circuit: Circuit) -> tuple[Floats, Floats, Floats]:
@@ -128,9 +124,9 @@ def half_power_hz(circuit: Circuit) -> tuple[Floats, Floats, Floats]:
 
 def phase_max_deg(circuit: Circuit, low_hz: float, high_hz: float) -> Floats:
     """Greatest phase of Z inside a range, degrees, shape ``S``."""
-    f = np.linspace(low_hz, high_hz, 4001)
-    k = int(np.argmax(np.angle(resonator.impedance(_first(circuit), f))))
-    near = np.linspace(f[max(k - 2, 0)], f[min(k + 2, f.size - 1)], 41)
+    f = np.linspace(low_hz, high_hz, _GRID)
+    k = np.clip(np.angle(resonator.impedance(circuit, f)).argmax(axis=-1), 1, f.size - 2)
+    near = f[k][..., None] + (f[1] - f[0]) * np.linspace(-1, 1, 41)
     return np.asarray(np.degrees(np.angle(resonator.impedance(circuit, near)).max(axis=-1)))
 
 
@@ -153,18 +149,3 @@ def _impedance_at(circuit: Circuit, f_hz: Floats) -> Complexes:
 def _slope(circuit: Circuit, f_hz: Floats) -> Floats:
     step = 1e-6 * f_hz * np.minimum(1.0, 100 / circuit.q[..., 0])
     return level_ohm(circuit, f_hz + step) - level_ohm(circuit, f_hz - step)
-
-
-def _root_between(function: Callable[[Floats], Floats], circuit: Circuit, low: float, high: float) -> Floats:
-    shape = circuit.c_f.shape
-    return root(function, np.full(shape, low), np.full(shape, high))
-
-
-def _first(circuit: Circuit) -> Circuit:
-    """The first of an array of circuits (or the only one)."""
-    if circuit.c_f.ndim == 0:
-        return circuit
-    return Circuit(
-        circuit.c_f[0], circuit.tan_delta[0], circuit.f_hz[0], circuit.q[0], circuit.g_s[0], circuit.theta_rad[0],
-        circuit.rs_ohm[0],
-    )  # fmt: skip

@@ -9,8 +9,10 @@ import typer
 
 from harness import __version__
 from harness.cli import checkup, demo, fit, history, limits, lot, record, replay, screen
-from harness.cli.output import print_error
+from harness.cli.output import print_error, say
 from harness.errors import RingtrueError
+
+_STOPPED = 130  # as shells count a SIGINT
 
 _SETTINGS = {"help_option_names": ["-h", "--help"]}
 
@@ -40,15 +42,15 @@ def _root(
     """The end-of-line station for piezoelectric transducers: sweep, judge, record, replay."""
 
 
-app.command("demo")(demo.demo)
-app.command("screen")(screen.screen)
-app.command("fit")(fit.fit)
-app.command("replay")(replay.replay)
-app.command("lot")(lot.lot)
+app.command("demo", short_help="The whole job on a simulated bench.")(demo.demo)
+app.command("screen", short_help="Screen parts at the station.")(screen.screen)
+app.command("fit", short_help="Characteristics of logged sweeps.")(fit.fit)
+app.command("replay", short_help="Judge logged sweeps again: lots or files.")(replay.replay)
+app.command("lot", short_help="A lot's yield, fail reasons and capability.")(lot.lot)
 app.add_typer(limits.app, name="limits")
-app.command("history")(history.history)
+app.command("history", short_help="Every attempt at a part.")(history.history)
 app.add_typer(record.app, name="record")
-app.command("checkup")(checkup.checkup)
+app.command("checkup", short_help="What a bug report needs: versions and places.")(checkup.checkup)
 
 
 def main() -> None:
@@ -58,10 +60,7 @@ def main() -> None:
     except RingtrueError as error:
         print_error(error)
         sys.exit(error.exit_code)
-    except KeyboardInterrupt:
-        print("ringtrue: stopped.", file=sys.stderr)
-        sys.exit(130)
-    except BrokenPipeError:
-        # whoever read our output has gone: nothing more to say, and Python must not try at exit
-        sys.stdout = None
-        sys.exit(0)
+    except SystemExit as end:
+        if end.code == _STOPPED:
+            say("stopped.")
+        raise

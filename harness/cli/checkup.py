@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from importlib import metadata
-from importlib.util import find_spec
 from pathlib import Path
 from typing import Any
 
@@ -12,7 +10,8 @@ from harness.cli.output import clock, console, environment, print_json_line
 from harness.errors import RingtrueError
 
 _LIBRARIES = (
-    "numpy", "scipy", "sqlalchemy", "pydantic", "typer", "rich", "pyvisa", "pyvisa-py", "pyserial", "jinja2", "pysqlite3",
+    "numpy", "scipy", "sqlalchemy", "pydantic", "typer", "rich", "pyvisa", "pyvisa-py", "pyserial", "jinja2",
+    "platformdirs", "pysqlite3",
 )  # fmt: skip
 
 
@@ -28,14 +27,14 @@ def checkup(station: StationOption = None, store: StoreOption = None, json: Json
         print_json_line(found)
         return
     from rich.table import Table
+    from rich.text import Text
+
+    from harness.report.words import visible
 
     table = Table.grid(padding=(0, 2))
     for key, value in found.items():
-        if isinstance(value, dict):
-            for name, version in value.items():
-                table.add_row(f"{key}: {name}", str(version))
-        else:
-            table.add_row(key.replace("_", " "), str(value))
+        text = ", ".join(f"{name} {version}" for name, version in value.items()) if isinstance(value, dict) else value
+        table.add_row(key, Text(visible(str(text))))
     console().print(table)
 
 
@@ -62,6 +61,8 @@ def _findings(station: str | None, store: str | None) -> dict[str, Any]:
 
 def _place(package: str) -> str:
     """Where a package would be loaded from, without importing it."""
+    from importlib.util import find_spec
+
     spec = find_spec(package)
     return str(Path(spec.origin).parent) if spec and spec.origin else "not found"
 
@@ -85,12 +86,15 @@ def _store(option: str | None) -> str:
     url = store_url(option, environment())
     try:
         with open_store(url, mode="read", now=clock()) as store:
-            return f"{url}: {len(store.lots())} lots"
+            count = len(store.lots())
+            return f"{url}: {count} {'lot' if count == 1 else 'lots'}"
     except RingtrueError as error:
         return error.sentence()
 
 
 def _versions() -> dict[str, str]:
+    from importlib import metadata
+
     out = {}
     for name in _LIBRARIES:
         try:

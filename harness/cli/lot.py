@@ -8,7 +8,7 @@ from typing import Annotated
 import typer
 
 from harness.cli.options import JsonOption, StoreOption
-from harness.cli.output import console, open_reading, print_json_line, write_text
+from harness.cli.output import busy, console, open_reading, print_json_line, write_text
 
 
 def lot(
@@ -28,7 +28,7 @@ def lot(
     from harness.report import terminal
     from harness.statistics.lot import to_json
 
-    with open_reading(store) as opened:
+    with busy("Reading the lot …"), open_reading(store) as opened:
         statistics, limits = desk.lot_statistics(opened, lot)
         if html is not None:
             write_text(html, desk.lot_html(opened, lot))

@@ -5,7 +5,7 @@ from __future__ import annotations
 import typer
 
 from harness.cli.options import JsonOption, StoreOption
-from harness.cli.output import clock, console, print_json_line, store_place
+from harness.cli.output import busy, clock, console, print_json_line, store_place
 
 app = typer.Typer(help="The store: is its evidence sound?", no_args_is_help=True, rich_markup_mode=None)
 
@@ -24,7 +24,8 @@ def verify(store: StoreOption = None, json: JsonOption = False) -> None:
     from harness.report import terminal
     from harness.store import verify_at
 
-    found = verify_at(store_place(store), now=clock())
+    with busy("Checking every record …"):
+        found = verify_at(store_place(store), now=clock())
     if json:
         print_json_line(
             {

@@ -63,6 +63,7 @@ def screen(
     from harness.run.part import Job
     from harness.station import open_station, parse_station, station_path, store_url
 
+    _check_lot(lot)
     limit_set = read_limits(limits)
     age_h = None if poled is None else _age_h(poled)
     path = station_path(station, environment())
@@ -88,6 +89,11 @@ def screen(
         raise typer.Exit(3)
 
 
+def _check_lot(lot: str) -> None:
+    if not lot.strip() or not lot.isprintable():
+        raise SetupError(f"{lot!a} is not a lot's id.", place="LOT", remedy="Give it a name of printable characters.")
+
+
 def _listed(serials: str | None, limits: LimitSet) -> tuple[str, ...] | None:
     """The serials of a list, checked whole before anything starts; None without a list."""
     from harness.run.serials import read_list
@@ -108,33 +114,19 @@ def _source(
     tray: int,
     stopping: Callable[[], bool],
 ) -> SerialSource:
-    """Where serials come from, and what the operator reads about it."""
-    from harness.cli.typing_in import LoadedByHand, TypedLines
+    """Where serials come from. Without a handler a person says when the part is in place."""
+    from harness.cli.typing_in import TypedLines
     from harness.run import serials as s
 
-    handled = station.bench.has_handler
+    confirm = None if station.bench.has_handler else TypedLines(sys.stdin, stopping, "In place? Enter: ")
     if listed is not None:
-        if handled or not sys.stdin.isatty():
-            return s.FromList(listed)
-        return LoadedByHand(listed, TypedLines(sys.stdin, stopping, "> "), lambda serial: _judged(station, job, serial))
+        # a list given by a script at a bench without a handler is measured as it comes
+        return s.FromList(listed, confirm if sys.stdin.isatty() else None)
     if auto:
-        start = s.auto_start(_serials_of(station, job.lot), job.lot, tray)
-        ask = None if handled else TypedLines(sys.stdin, stopping, "Next part in place? Enter: ")
-        numbered = s.Numbered(job.lot, tray, start, ask)
-        if handled:
-            numbered.prompt = "The handler brings the parts; they are numbered by tray and position."
-        return numbered
+        return s.Numbered(job.lot, tray, s.auto_start(_serials_of(station, job.lot), job.lot, tray), confirm)
     if station.bench.has_scanner:
-        scanner = s.FromScanner(station.bench)
-        if handled:
-            scanner.prompt = "The handler brings the parts; the scanner reads their codes."
-        return scanner
+        return s.FromScanner(station.bench)
     return s.FromKeyboard(TypedLines(sys.stdin, stopping, "Serial: "))
-
-
-def _judged(station: Station, job: Job, serial: str) -> bool:
-    standing = station.store.standing(job.lot, serial, job.conditions.element)
-    return standing is not None and standing.verdict.value != "no verdict"
 
 
 def _say_first(store: str, json: bool) -> None:

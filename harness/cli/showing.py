@@ -8,11 +8,11 @@ from collections.abc import Callable, Mapping, Sequence
 from rich.console import Group, RenderableType
 from rich.text import Text
 
-from harness.cli.hanging import Hanging, Under
 from harness.cli.output import plain_times
 from harness.judging.wording import action_for as action_of
 from harness.records import Judgement, LimitSet, Record
 from harness.replay import Replayed
+from harness.report.hanging import Hanging, Under
 from harness.report.terminal import verdict_text
 from harness.report.words import counted, visible
 from harness.run import events as e
@@ -54,24 +54,28 @@ def _sentence(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def _ended(event: e.Ended) -> str:
+def _ended(event: e.Ended, counts: Mapping[str, int] | None = None) -> str:
+    verdicts = f" ({told(counts)})" if counts and event.judged else ""
     refused = f", {event.refused} not measured" if event.refused else ""
     note = f" {_sentence(event.note)}" if event.note else ""
-    return f"End: {counted(event.judged, 'part', 'parts')} judged{refused}.{note}"
+    return f"End: {counted(event.judged, 'part', 'parts')} judged{verdicts}{refused}.{note}"
 
 
-def event_block(event: e.Event) -> RenderableType | None:
-    """The same for the station's terminal: loud what asks for a person, quiet what does not."""
+def event_block(event: e.Event, counts: Mapping[str, int]) -> RenderableType | None:
+    """The same for the station's terminal: loud what asks for a person, quiet what does not.
+
+    ``counts``: how many parts of this run came to which verdict.
+    """
     if isinstance(event, e.Refused):
         head = Text("▲ NOT MEASURED  ", style="bold yellow").append(visible(_who(event)), style="not yellow")
         return Group(head, Under(plain_times(_sentence(event.text))))
     if isinstance(event, e.Held):
         return Group(Text("▲ LOT HELD", style="bold yellow"), Under(event.text))
+    if isinstance(event, e.Ended):
+        return Text(_ended(event, counts))
     text = event_text(event)
     if isinstance(event, e.BenchTrouble):
         return Hanging(Text("! ", style="bold yellow"), text)
-    if isinstance(event, e.Ended):
-        return Text(text)
     return Text(text, style="dim") if text else None
 
 
@@ -128,11 +132,8 @@ def replay_summary(results: Sequence[Replayed]) -> str:
     counts = Counter(result.judgement.verdict.value for result in results)
     stored = [r for r in results if r.original is not None]
     changed = sum(r.original.record.judgement.verdict is not r.judgement.verdict for r in stored if r.original)
-    was = (
-        f" {changed} of {len(stored)} {'differs' if changed == 1 else 'differ'} from the verdict on record, which stays."
-        if stored
-        else ""
-    )
+    differ = "differs" if changed == 1 else "differ"
+    was = f" {changed} of {len(stored)} {differ} from the verdict on record, which stays." if stored else ""
     return f"{counted(len(results), 'sweep', 'sweeps')}: {told(counts) or 'nothing'}.{was}"
 
 

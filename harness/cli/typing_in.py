@@ -6,10 +6,8 @@ import io
 import os
 import selectors
 import sys
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from typing import TextIO
-
-from harness.run.serials import FromList, Serial, Wait
 
 _TURN_S = 0.2  # how soon a stop is noticed while nobody types
 
@@ -27,10 +25,9 @@ class TypedLines:
         self._held = b""
         self._ended = False
 
-    def __call__(self, prompt: str | None = None) -> str:
-        shown = self._prompt if prompt is None or not self._prompt else prompt
-        if shown:
-            print(shown, end="", file=sys.stderr, flush=True)
+    def __call__(self) -> str:
+        if self._prompt:
+            print(self._prompt, end="", file=sys.stderr, flush=True)
         try:
             number = self._stream.fileno()
         except io.UnsupportedOperation:  # a stream without a file beneath it cannot be waited for
@@ -42,6 +39,8 @@ class TypedLines:
             self._ended = not piece
             self._held += piece
         line, end, self._held = self._held.partition(b"\n")
+        if self._prompt and not end:
+            print(file=sys.stderr)  # Ctrl-D left the cursor behind the prompt
         return (line + end).decode("utf-8", "replace")
 
     def _wait(self, number: int) -> bool:
@@ -52,23 +51,3 @@ class TypedLines:
                 if selector.select(_TURN_S):
                     return True
         return False
-
-
-class LoadedByHand:
-    """Serials of a list at a station without a handler: each part is waited for before it is measured.
-
-    ``judged`` tells of serials that will be refused, for which nobody need load a part.
-    """
-
-    ahead = True
-
-    def __init__(self, serials: Iterable[str], lines: TypedLines, judged: Callable[[str], bool]) -> None:
-        self.prompt = "Load the part that is asked for, then Enter. Ctrl-D ends the lot."
-        self._list = FromList(serials)
-        self._lines, self._judged = lines, judged
-
-    def next(self, timeout_s: float) -> Serial | Wait:
-        found = self._list.next(timeout_s)
-        if isinstance(found, Wait) or self._judged(found.text):
-            return found
-        return found if self._lines(f"Load {found.text}, then Enter: ") else Wait.END

@@ -10,7 +10,7 @@ from rich.control import Control
 from rich.segment import ControlType
 from rich.text import Text
 
-from harness.cli.showing import attempt_block, event_block, told
+from harness.cli.showing import attempt_block, event_block
 from harness.records import LimitSet
 from harness.report.words import visible
 from harness.run import events as e
@@ -35,19 +35,36 @@ class _Watching:
     def __init__(self, limits: LimitSet, out: Console) -> None:
         self._limits, self._out = limits, out
         self._passing = False
+        self._prompted = ""
+        self._measuring = False
+        self._later: list[e.Event] = []
         self._counts: Counter[str] = Counter()
 
     def show(self, event: e.Event) -> None:
-        if isinstance(event, e.Measuring):
+        if isinstance(event, e.Waiting) and event.text == self._prompted:
+            return  # said a moment ago, when the station was ready
+        self._prompted = event.waits_for if isinstance(event, e.Ready) else ""
+        if isinstance(event, e.Opened):
+            self._measuring = True
+        elif isinstance(event, e.Measuring):
             self._pass_by(f"… {event.serial}  {_STAGES.get(event.stage, event.stage)}")
         elif isinstance(event, e.Recorded):
-            if event.record.final:
-                self._counts[event.record.judgement.verdict.value] += 1
-            self._print(attempt_block(event.record, self._limits))
-        elif (block := event_block(event)) is not None:
+            self._recorded(event)
+        elif self._measuring:
+            self._later.append(event)  # the verdict first
+        elif (block := event_block(event, self._counts)) is not None:
             self._print(block)
-            if isinstance(event, e.Ended) and self._counts:
-                self._print(Text(told(self._counts), style="dim"))
+
+    def _recorded(self, event: e.Recorded) -> None:
+        """The verdict, then what happened meanwhile; a fault that is the verdict's own reason is not said twice."""
+        judgement = event.record.judgement
+        if event.record.final:
+            self._counts[judgement.verdict.value] += 1
+        self._print(attempt_block(event.record, self._limits))
+        self._measuring, later, self._later = False, self._later, []
+        for one in later:
+            if not (isinstance(one, e.BenchTrouble) and one.text in {reason.text for reason in judgement.reasons}):
+                self.show(one)
 
     def _pass_by(self, text: str) -> None:
         """A line that the next one replaces; only where somebody looks."""

@@ -14,6 +14,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from harness.fitting import model, start, trial
 from harness.fitting.model import Data
+from harness.fitting.trial import LEAST_KNOWN_C0
 from harness.records import Floats
 
 CHUNK_POINTS = 25_600  # at a time: what fits a core's own cache; changes no bit
@@ -21,7 +22,11 @@ CHUNK_POINTS = 25_600  # at a time: what fits a core's own cache; changes no bit
 
 @dataclass(frozen=True, slots=True, eq=False)
 class BatchFit:
-    """Arrays ``(B,)``; NaN where ``status`` is not "ok". ``u_…`` are standard uncertainties in the same unit."""
+    """Arrays ``(B,)``; NaN where ``status`` is not "ok". ``u_…`` are standard uncertainties in the same unit.
+
+    Where the points stay so near the resonance that C0 is not told to 30 %, it is NaN, and so is what hangs on it: fp,
+    tan δ and keff.
+    """
 
     status: NDArray[np.str_]
     fs_hz: Floats
@@ -46,6 +51,7 @@ class BatchFit:
 
 
 _NAMES = ("fs_hz", "fp_hz", "r1_ohm", "q", "c0_f", "tan_delta", "c1_f", "l1_h", "keff")
+_BESIDE = np.array([name in ("fp_hz", "c0_f", "tan_delta", "keff") for name in 2 * _NAMES] + [False])
 
 
 def fit_batch(
@@ -110,17 +116,30 @@ def _rows(f_hz: ArrayLike, z_ohm: ArrayLike, sigma_ohm: ArrayLike | None) -> Dat
 
 def _chunk(data: Data, window: tuple[float, float] | None, free: tuple[int, ...]) -> list[NDArray[np.generic]]:
     count = data.weight.sum(axis=-1)
-    workable = np.flatnonzero(count >= len(free) + 3)
     status = np.full(len(count), "bad-data", dtype="<U13")
     values = np.full((len(count), 2 * len(_NAMES) + 1), np.nan)
-    if workable.size:
-        work = data.rows(workable)
-        fitted = trial.fit_branches(work, start.single_branch(work, window), free)
-        words = trial.judge_fit(work, fitted, window)
-        status[workable] = words
-        fine = words == "ok"
-        values[workable[fine]] = _columns(fitted, free)[fine]
+    enough = np.flatnonzero(count >= len(free) + 3)
+    status[enough], values[enough] = _fitted(data.rows(enough), window, free)
+    if window is not None:
+        # another resonance outside the window can spoil the whole: look at the window alone
+        inside = data.weight * ((data.f_hz >= window[0]) & (data.f_hz <= window[1]))
+        again = np.flatnonzero((count >= len(free) + 3) & (status != "ok") & (inside.sum(axis=-1) >= len(free) + 3))
+        words, columns = _fitted(data.weighted(inside).rows(again), window, free)
+        status[again[words == "ok"]], values[again[words == "ok"]] = "ok", columns[words == "ok"]
     return [status, *values.T]
+
+
+def _fitted(data: Data, window: tuple[float, float] | None, free: tuple[int, ...]) -> tuple[NDArray[np.str_], Floats]:
+    """Status words ``(B,)`` and columns ``(B, 19)``, NaN where not ok."""
+    if len(data.f_hz) == 0:
+        return np.empty(0, dtype="<U13"), np.empty((0, 2 * len(_NAMES) + 1))
+    fitted = trial.fit_branches(data, start.single_branch(data, window), free)
+    words = trial.judge_fit(data, fitted, window)
+    columns = _columns(fitted, free)
+    unreached = ~(fitted.covariance[:, 0, 0] < LEAST_KNOWN_C0**2)
+    columns[unreached[:, None] & _BESIDE] = np.nan
+    columns[words != "ok"] = np.nan
+    return words, columns
 
 
 def _columns(fitted: trial.Fitted, free: tuple[int, ...]) -> Floats:

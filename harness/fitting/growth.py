@@ -17,6 +17,7 @@ from harness.records import Floats
 
 _MOST_PHASE = 0.6  # rad: a branch turned further is no resonance but a misfit of something else
 _LEAST_Q_SHARE = 0.4  # of the wanted Q: a broader hump is a misfit of the background, not a mode
+ALIKE = 0.3  # correlation of neighbouring residuals from which something is left over
 _FAR = 2.0  # times fs: where the branch stands that gives the background its slope
 _TINY = 1e-6  # of C: how much of that branch is put in to see what it would do
 
@@ -83,23 +84,35 @@ def with_least_slope(data: Data, begin: Grown) -> Floats | None:
     return held.parameters if held.fitted.converged[0] and _sane(data, held) else None
 
 
-def steeper(parameters: Floats, free: tuple[int, ...]) -> Floats | None:
-    """A start with the held branch half as far off again, of the same slope; None where no branch is held."""
-    held = [k for k in range(model.FIRST_BRANCH, parameters.size - 1, model.BRANCH) if k not in free]
+def elsewhere(parameters: Floats, free: tuple[int, ...]) -> Floats | None:
+    """A start with the held branch half as far off again, of the same slope and level at fs; None where none is held.
+
+    Far below its resonance at f_n a branch is the capacitance c/(1 − x²), x = f/f_n, which rises by 2cx²/(1 − x²)²
+    per relative step of f.
+    """
+    held = held_branches(parameters, free)
     if not held:
         return None
-    out, at = parameters.copy(), held[0]
-    ln_c = out[at + model.LN_G] - out[at + model.LN_F] - out[at + model.LN_Q] - np.log(2 * np.pi)
+    out, at = parameters.copy(), model.FIRST_BRANCH + model.BRANCH * held[0]
     out[at + model.LN_F] += np.log(1.5)
-    out[at + model.LN_G] += 3 * np.log(1.5)
-    share = np.exp(ln_c - out[model.LN_C]) * (1.5**2 - 1)
-    out[model.LN_C] += np.log(max(1 - share, 0.1))
+    fs = parameters[model.FIRST_BRANCH + model.LN_F]
+    x1, x2 = np.exp(2 * (fs - parameters[at + model.LN_F])), np.exp(2 * (fs - out[at + model.LN_F]))
+    times = x1 / (1 - x1) ** 2 / (x2 / (1 - x2) ** 2)
+    out[at + model.LN_G] += np.log(1.5 * times)
+    ln_c = parameters[at + model.LN_G] - parameters[at + model.LN_F] - parameters[at + model.LN_Q] - np.log(2 * np.pi)
+    lost = np.exp(ln_c - out[model.LN_C]) * (times / (1 - x2) - 1 / (1 - x1))
+    out[model.LN_C] += np.log(max(1 - lost, 0.1))
     return out
 
 
+def held_branches(parameters: Floats, free: tuple[int, ...]) -> list[int]:
+    """Branches that only carry the background's slope: their frequency was not free."""
+    places = range(model.FIRST_BRANCH, parameters.size - 1, model.BRANCH)
+    return [m for m, k in enumerate(places) if k not in free]
+
+
 def has_slope(grown: Grown) -> bool:
-    """Is there a branch held in place?"""
-    return any(k not in grown.free for k in range(model.FIRST_BRANCH, grown.parameters.size - 1, model.BRANCH))
+    return bool(held_branches(grown.parameters, grown.free))
 
 
 def _slope_begun(data: Data, begin: Grown) -> tuple[Floats, int, tuple[int, ...]]:
@@ -123,7 +136,9 @@ def add_modes(data: Data, grown: Grown, window_hz: tuple[float, float], least: i
     """Add branches: up to ``least`` in any case, beyond that, up to ``most``, while each is significant."""
     count = 1
     while count < most:
-        more = _one_more(data, grown, window_hz, least_gain=0.0 if count < least else SIGNIFICANT / 3)
+        # where neighbours err alike the noise estimate is misfit too, and no measure of what is promising
+        asked = count < least or grown.fitted.lag_one[0] > ALIKE
+        more = _one_more(data, grown, window_hz, least_gain=0.0 if asked else SIGNIFICANT / 3)
         if more is None:
             break
         gain = (grown.fitted.cost[0] - more.fitted.cost[0]) / max(more.fitted.scale[0] ** 2, 1e-24)
@@ -159,19 +174,53 @@ def _one_more(data: Data, grown: Grown, window_hz: tuple[float, float], *, least
     """
     z = data.r_ohm[0] + 1j * data.x_ohm[0]
     left = modes.leftover(data.f_hz[0], z, grown.fitted.weight[0], grown.circuit)
-    branch, gain = modes.next_branch(left, grown.circuit, used_hz(data))
+    branches, gain = modes.next_branches(left, grown.circuit, used_hz(data))
     if gain <= least_gain * float(grown.fitted.scale[0]) ** 2:
         return None
-    begin = modes.with_branch(grown.parameters, branch)
+    starts = [modes.with_branch(grown.parameters, branch) for branch in branches]
+    # the most promising and a split of the wanted one; the others only where neither comes to anything
+    for begins in ([starts[0], _halves(data, grown)], starts[1:]):
+        found = [more for more in _tried(data, grown, np.stack(begins)) if _sane(data, more)]
+        if found:
+            return _reordered(data, min(found, key=lambda more: more.information), window_hz)
+    return None
+
+
+def _halves(data: Data, grown: Grown) -> Floats:
+    """A start with the wanted branch split in two, settled first without phases, which trade against each other."""
+    begin = modes.split(grown.parameters)
+    thetas = range(model.FIRST_BRANCH + model.THETA, begin.size - 1, model.BRANCH)
     last = begin.size - 1 - model.BRANCH
-    free = (*grown.free, *range(last, last + model.BRANCH))
-    more = Grown(trial.fit_branches(data, begin[None, :], free), free)
+    free = (*(k for k in grown.free if k < last), *range(last, last + model.BRANCH))
+    straight = tuple(k for k in free if k not in thetas)
+    return np.asarray(trial.fit_branches(data, begin[None, :], straight).parameters[0])
+
+
+def _tried(data: Data, grown: Grown, begins: Floats) -> list[Grown]:
+    """Fits with one branch more, from several starts ``(K, P)``."""
+    last = grown.parameters.size - 1
+    free = (*(k for k in grown.free if k < last), *range(last, last + model.BRANCH))
+    fitted = trial.fit_branches(data.rows(np.zeros(len(begins), dtype=np.intp)), begins, free)
+    ends = [Grown(fitted.rows(np.array([k])), free) for k in _distinct(fitted)]
+    settled = [_settled(data, more, last, grown) for more in ends]
+    return [more for more in settled if more.fitted.converged[0]]
+
+
+def _distinct(fitted: Fitted) -> list[int]:
+    """Rows that ended in different places, cheapest first."""
+    out: list[int] = []
+    for k in np.argsort(fitted.cost, kind="stable"):
+        if all(abs(fitted.cost[k] / fitted.cost[j] - 1) > 1e-6 for j in out):
+            out.append(int(k))
+    return out
+
+
+def _settled(data: Data, more: Grown, last: int, before: Grown) -> Grown:
+    """A new branch that left the data is held to what its slope can tell."""
     low, high = used_hz(data)
-    if not low < np.exp(more.parameters[last]) < high:
-        more = _beyond(data, more, last, float(grown.parameters[model.FIRST_BRANCH + model.LN_Q]))
-    if not more.fitted.converged[0] or not _sane(data, more):
-        return None
-    return _reordered(data, more, window_hz)
+    if low < np.exp(more.parameters[last]) < high:
+        return more
+    return _beyond(data, more, last, float(before.parameters[model.FIRST_BRANCH + model.LN_Q]))
 
 
 def _beyond(data: Data, more: Grown, at: int, ln_q: float) -> Grown:

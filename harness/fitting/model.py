@@ -32,6 +32,10 @@ class Data:
     weight: Floats
     sigma_ohm: Floats | None
 
+    def weighted(self, weight: Floats) -> Data:
+        """The same points with other weights."""
+        return Data(self.f_hz, self.r_ohm, self.x_ohm, weight, self.sigma_ohm)
+
     def rows(self, index: np.ndarray) -> Data:
         sigma = None if self.sigma_ohm is None else self.sigma_ohm[index]
         return Data(self.f_hz[index], self.r_ohm[index], self.x_ohm[index], self.weight[index], sigma)
@@ -100,6 +104,31 @@ def misfit_and_slopes(parameters: Floats, data: Data, free: tuple[int, ...]) -> 
     return value, [_joined(*slopes[k]) for k in free], _joined(scale, scale)
 
 
+def log_misfit_and_slopes(parameters: Floats, data: Data, free: tuple[int, ...]) -> tuple[Floats, list[Floats], Floats]:
+    """As ``misfit_and_slopes``, of ln(Z_model/Z): level and phase. The same to first order, and tame far from the fit.
+
+    A peak in the wrong place costs its logarithm, not its height, so that this finds its way from afar, and a wild
+    point pulls little.
+    """
+    circuit = circuit_of(parameters)
+    omega_c, branches = _parts(circuit, data.f_hz)
+    a, b = _total(circuit, omega_c, branches)
+    rm, xm = impedance(circuit, a, b)
+    model2, size2 = rm * rm + xm * xm, data.r_ohm * data.r_ohm + data.x_ohm * data.x_ohm
+    scale = data.weight if data.sigma_ohm is None else data.weight * np.sqrt(size2) / data.sigma_ohm
+    turned = np.arctan2(xm * data.r_ohm - rm * data.x_ohm, rm * data.r_ohm + xm * data.x_ohm)
+    value = _joined(0.5 * np.log(model2 / np.where(size2 > 0, size2, 1.0)) * scale, turned * scale)
+    # dZ/Z = −dY/(Y² Z), and 1/(Y² Z) = conj(Y² Z)/|Y² Z|²
+    re, im = _times((a * a - b * b, 2 * a * b), (rm, xm))
+    over = scale / (re * re + im * im)
+    turn = -re * over, im * over
+    slopes = _static_slopes(circuit, omega_c, turn)
+    for m, branch in enumerate(branches):
+        slopes |= _branch_slopes(circuit, data.f_hz, m, branch, turn)
+    slopes[parameters.shape[-1] - 1] = rm * scale / model2, -xm * scale / model2
+    return value, [_joined(*slopes[k]) for k in free], _joined(scale, scale)
+
+
 _Pair = tuple[Floats, Floats]  # real and imaginary part, each (B, N)
 
 
@@ -111,6 +140,10 @@ class _Branch:
     b: Floats
     q: Floats
     h: Floats
+
+
+def _times(one: _Pair, other: _Pair) -> _Pair:
+    return one[0] * other[0] - one[1] * other[1], one[0] * other[1] + one[1] * other[0]
 
 
 def _joined(real: Floats, imaginary: Floats) -> Floats:

@@ -17,7 +17,7 @@ from harness.fitting.model import Data
 from harness.fitting.trial import Fitted
 from harness.records import Complexes, FitStatus, Floats
 
-_ALIKE = 0.3  # correlation of neighbouring residuals from which another way to the circuit is tried
+_REACHES = (10.0, 5.0)  # bandwidths to either side of the conductance peak
 _INNER = 0.7  # share of the span that the refit for the model term keeps
 
 
@@ -55,6 +55,8 @@ class SingleFit:
     sloped: Floats | None = None
 
 
+# where there is no resonance the solver may wander off to infinities; they are looked for, and refused
+@np.errstate(over="ignore", invalid="ignore", divide="ignore")
 def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: float | None = None) -> SingleFit:
     """Fit one sweep (``(N,)`` hertz and ohm, corrected for its fixture).
 
@@ -68,30 +70,69 @@ def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: f
         return _refused(FitStatus.BAD_DATA, f"only {f.size} usable points; at least 10 are needed", f, z, dropped)
     whole = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)))
     begin, located = _locate(whole, choice)
-    word = str(trial.judge_fit(whole, located, choice.window_hz)[0])
-    if word != "ok" and choice.span is None:
-        begin, located = _second_look(whole, choice, begin, located)
-    data = _cut(whole, located, choice)
-    grown = _grow(data, located, choice, refit=data is not whole)
+    # what bounced stays out from here on: each larger circuit would have to find it again
+    whole = whole.weighted(located.weight)
+    data, grown = _grow(whole, located, choice)
+    if not _fits(data, grown, choice):
+        data, grown = _second_look(whole, choice, begin, located, (data, grown))
     word = str(trial.judge_fit(data, grown.fitted, choice.window_hz)[0])
     if word != "ok":
         status = FitStatus(word)
         return _refused(status, _explain(status, data, grown.fitted), f, z, dropped)
+    if choice.choose_series_resistance:
+        grown = growth.with_series_resistance(data, grown)
     return _finish(data, grown, choice, dropped, noise_relative)
 
 
-def _grow(data: Data, located: Fitted, choice: Choice, *, refit: bool) -> Grown:
-    """The located branch, on the data kept, with what the data ask for beside it."""
+def _grow(
+    whole: Data, located: Fitted, choice: Choice, *, slope_first: bool = True, nearby: bool = False
+) -> tuple[Data, Grown]:
+    """The points kept, and the located branch with what they ask for beside it; ``nearby``: located on few of them."""
+    data = _cut(whole, located, choice)
     free = growth.all_but_rs(located.parameters)
-    if refit:
+    if data is not whole:
         located = trial.fit_branches(data, located.parameters, free)
-    begin, modes_wanted = Grown(located, free), (choice.branches, choice.most_branches)
-    grown = growth.add_modes(data, growth.bear_slope(data, begin), choice.window_hz, *modes_wanted)
-    if grown.fitted.lag_one[0] > _ALIKE:
-        # something is left over: a slope taken early may stand where a mode belongs
-        other = growth.bear_slope(data, growth.add_modes(data, begin, choice.window_hz, *modes_wanted))
-        grown = min(grown, other, key=lambda one: one.information)
-    return growth.with_series_resistance(data, grown) if choice.choose_series_resistance else grown
+    elif nearby:
+        # solving for one branch on everything would lose it again
+        located = trial.as_it_stands(data, located.parameters, free)
+    begin = Grown(located, free)
+    count = (choice.branches, choice.most_branches)
+    if slope_first:
+        return data, growth.add_modes(data, growth.bear_slope(data, begin), choice.window_hz, *count)
+    return data, growth.bear_slope(data, growth.add_modes(data, begin, choice.window_hz, *count))
+
+
+def _fits(data: Data, grown: Grown, choice: Choice) -> bool:
+    """Is there a resonance, and little left over that neighbours have in common?"""
+    word = str(trial.judge_fit(data, grown.fitted, choice.window_hz)[0])
+    return word == "ok" and float(grown.fitted.lag_one[0]) <= growth.ALIKE
+
+
+def _second_look(
+    whole: Data, choice: Choice, begin: Floats, located: Fitted, first: tuple[Data, Grown]
+) -> tuple[Data, Grown]:
+    """Other ways to the circuit: with modes before the background's slope, which may stand where a mode belongs; and
+    from the neighbourhood of the conductance peak, which a mode elsewhere does not spoil."""
+    ways = [first, _grow(whole, located, choice, slope_first=False)]
+    ways += [_grow(whole, close, choice, slope_first=False, nearby=True) for close in _close(whole, choice, begin)]
+    sound = [way for way in ways if str(trial.judge_fit(way[0], way[1].fitted, choice.window_hz)[0]) == "ok"]
+    # as many points in each, or nothing could be compared
+    alike = [way for way in sound if way[0].weight.sum() == sound[0][0].weight.sum()]
+    return min(alike, key=lambda way: way[1].information) if alike else first
+
+
+def _close(whole: Data, choice: Choice, begin: Floats) -> list[Fitted]:
+    """The branch that the neighbourhood of the conductance peak shows, if it shows one."""
+    f0, q0 = np.exp(begin[2]), np.exp(begin[3])
+    out = []
+    for reach in _REACHES:
+        near = whole.weight * (np.abs(whole.f_hz / f0 - 1) <= reach / q0)
+        if near.sum() >= 12:
+            data = whole.weighted(near)
+            fitted = trial.fit_branches(data, begin[None, :], growth.all_but_rs(begin))
+            if str(trial.judge_fit(data, fitted, choice.window_hz)[0]) == "ok":
+                out.append(fitted)
+    return out[:1]
 
 
 def _locate(data: Data, choice: Choice) -> tuple[Floats, Fitted]:
@@ -103,21 +144,7 @@ def _locate(data: Data, choice: Choice) -> tuple[Floats, Fitted]:
     inside = (fs >= choice.window_hz[0]) & (fs <= choice.window_hz[1])
     cost = np.where(inside & np.isfinite(fitted.cost), fitted.cost, np.inf)
     best = int(cost.argmin())
-    return begins[best], fitted.row(best)
-
-
-def _second_look(whole: Data, choice: Choice, begin: Floats, located: Fitted) -> tuple[Floats, Fitted]:
-    """The whole sweep does not look like one resonance: look again close to the conductance peak alone."""
-    f0, q0 = np.exp(begin[2]), np.exp(begin[3])
-    near = np.abs(whole.f_hz / f0 - 1) <= max(6 / q0, 0.06)
-    if near.sum() < 10:
-        return begin, located
-    data = Data(whole.f_hz, whole.r_ohm, whole.x_ohm, near.astype(float), None)
-    close = trial.fit_branches(data, begin[None, :], (0, 1, 2, 3, 4, 5))
-    if str(trial.judge_fit(data, close, choice.window_hz)[0]) != "ok":
-        return begin, located
-    again = trial.fit_branches(whole, close.parameters, (0, 1, 2, 3, 4, 5))
-    return begin, again if again.cost[0] <= located.cost[0] else located
+    return begins[best], fitted.rows(np.array([best]))
 
 
 def _cut(whole: Data, located: Fitted, choice: Choice) -> Data:
@@ -125,23 +152,20 @@ def _cut(whole: Data, located: Fitted, choice: Choice) -> Data:
     if choice.span is None:
         return whole
     fs = float(np.exp(located.parameters[0, 2]))
-    inside = np.abs(whole.f_hz / fs - 1) <= choice.span
-    if inside.sum() < 10:
-        return whole
-    return Data(whole.f_hz, whole.r_ohm, whole.x_ohm, inside.astype(float), None)
+    inside = whole.weight * (np.abs(whole.f_hz / fs - 1) <= choice.span)
+    return whole.weighted(inside) if inside.sum() >= 10 else whole
 
 
 def _finish(data: Data, grown: Grown, choice: Choice, dropped: int, noise: float | None) -> SingleFit:
-    circuit, fitted = grown.circuit, grown.fitted
-    z = data.r_ohm[0] + 1j * data.x_ohm[0]
-    left = modes.leftover(data.f_hz[0], z, fitted.weight[0], circuit)
-    used = Data(data.f_hz, data.r_ohm, data.x_ohm, fitted.weight, None)
+    fitted = grown.fitted
+    used = data.weighted(fitted.weight)
     scale = float(fitted.scale[0])
     lag = _lag_one(fitted)
     # neighbours that err alike tell less than they seem to: a first-order autoregression's variance is
     # (1 + ρ)/(1 − ρ) times as large
     stretch = (1 + lag) / (1 - lag) * max(1.0, (noise or 0.0) / max(scale, 1e-30)) ** 2
-    smallest = modes.floor(left, circuit, _overlap(growth.used_hz(used), choice.window_hz), max(scale, noise or 0.0))
+    within = _overlap(growth.used_hz(used), choice.window_hz)
+    smallest = modes.floor(used, grown.parameters, grown.free, within) * max(scale, noise or 0.0)
     return SingleFit(
         FitStatus.OK,
         "resonance found and resolved",
@@ -154,10 +178,16 @@ def _finish(data: Data, grown: Grown, choice: Choice, dropped: int, noise: float
         used,
         smallest,
         dropped,
-        int(data.weight.sum() - fitted.weight.sum()),
+        _left_out(data, fitted, choice),
         lag,
         None if growth.has_slope(grown) else growth.with_least_slope(used, grown),
     )
+
+
+def _left_out(data: Data, fitted: Fitted, choice: Choice) -> int:
+    """How many points inside the span the fit was made without."""
+    everything = _cut(data.weighted(np.ones_like(data.weight)), fitted, choice)
+    return int(everything.weight.sum() - fitted.weight.sum())
 
 
 def _overlap(a: tuple[float, float], b: tuple[float, float]) -> tuple[float, float]:
@@ -186,10 +216,11 @@ def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:
     weight = np.stack([inner, *([data.weight[0]] * (len(impedances) + 1))])
     f = np.repeat(data.f_hz, len(z), axis=0)
     begin = np.repeat(fit.parameters[None, :], len(z), axis=0)
-    elsewhere = growth.steeper(fit.parameters, fit.free)
-    begin[1] = fit.parameters if elsewhere is None else elsewhere
+    moved = growth.elsewhere(fit.parameters, fit.free)
+    begin[1] = fit.parameters if moved is None else moved
     again = trial.fit_branches(model.data_of(f, z, weight), begin, fit.free, rejecting=False)
-    near = np.abs(again.parameters - begin).max(axis=-1) < 1.0
+    # the wanted branch must stay what it is; how the background's slope is shared out may change
+    near = np.abs(again.parameters - begin)[:, : model.FIRST_BRANCH + model.BRANCH].max(axis=-1) < 1.0
     fine = again.converged & near & (weight.sum(axis=-1) > fit.parameters.size)
     return [row if ok else fit.parameters for row, ok in zip(again.parameters, fine, strict=True)]
 

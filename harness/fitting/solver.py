@@ -113,6 +113,11 @@ def covariance(normal: Floats) -> Floats:
     return np.asarray(out / (scale[:, :, None] * scale[:, None, :]))
 
 
+def inverse_normal(slopes: list[Floats]) -> Floats:
+    """The inverse of JᵀJ ``(B, F, F)``."""
+    return covariance(_normal(np.zeros_like(slopes[0]), slopes)[2])
+
+
 def full_step(value: Floats, slopes: list[Floats]) -> tuple[Floats, Floats]:
     """The undamped Gauss–Newton step ``(B, F)``, of any length, and the inverse of JᵀJ ``(B, F, F)``."""
     _, gradient, normal = _normal(value, slopes)

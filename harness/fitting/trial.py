@@ -2,17 +2,22 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from harness.fitting import model, solver, start
+from harness.fitting import bounce, model, solver
 from harness.fitting.model import Data
 from harness.records import Floats
 
-WILD = 8.0  # a lone point this many times the typical misfit, and four times its neighbours', is a bounced contact
+_CLEARLY_LESS = 0.9  # of the noise estimate
+_UNEXPLAINED = 2.0  # times the typical step between neighbours
+LEAST_KNOWN_C0 = 0.3  # relative u of C0 beyond which the sweep has not reached what lies beside the resonance
 SIGNIFICANT = 60.0  # least fall of misfit²/noise² that a branch must bring, against one found anywhere by chance
+_Misfit = Callable[[Floats, Data, tuple[int, ...]], tuple[Floats, list[Floats], Floats]]
+_ROUGH = 1.0  # of a standard uncertainty, as ``solver.solve`` counts it
 _HALF_POWER_WIDTHS = 2.0
 _MOST_LOSS = 0.5  # |tan δ| of what lies beside the branch; beyond, it is no dielectric
 _ALIKE = 0.5  # correlation of neighbouring residuals from which a sweep's wandering could look like a resonance
@@ -36,52 +41,97 @@ class Fitted:
     weight: Floats
     lag_one: Floats
 
-    def row(self, b: int) -> Fitted:
-        pick = slice(b, b + 1)
+    def rows(self, index: NDArray[np.intp]) -> Fitted:
         return Fitted(
-            self.parameters[pick],
-            self.covariance[pick],
-            self.scale[pick],
-            self.relative_rms[pick],
-            self.dof[pick],
-            self.cost[pick],
-            self.converged[pick],
-            self.weight[pick],
-            self.lag_one[pick],
+            self.parameters[index],
+            self.covariance[index],
+            self.scale[index],
+            self.relative_rms[index],
+            self.dof[index],
+            self.cost[index],
+            self.converged[index],
+            self.weight[index],
+            self.lag_one[index],
+        )
+
+    def replaced(self, index: NDArray[np.intp], other: Fitted) -> Fitted:
+        """With the rows ``index`` taken from ``other``, in its order."""
+        where = np.arange(len(self.cost))
+        where[index] = len(where) + np.arange(index.size)
+        return Fitted(
+            np.concatenate([self.parameters, other.parameters])[where],
+            np.concatenate([self.covariance, other.covariance])[where],
+            np.concatenate([self.scale, other.scale])[where],
+            np.concatenate([self.relative_rms, other.relative_rms])[where],
+            np.concatenate([self.dof, other.dof])[where],
+            np.concatenate([self.cost, other.cost])[where],
+            np.concatenate([self.converged, other.converged])[where],
+            np.concatenate([self.weight, other.weight])[where],
+            np.concatenate([self.lag_one, other.lag_one])[where],
         )
 
 
 def fit_branches(data: Data, begin: Floats, free: tuple[int, ...], *, rejecting: bool = True) -> Fitted:
-    """Solve, drop lone wild points once, and solve those rows again. ``free`` lists the parameters to move."""
-    solution = _solve(data, begin, free)
-    weight = data.weight
-    if rejecting:
-        kept = weight * ~_lone_wild(model.misfit(solution.parameters, data), weight)
-        touched = np.flatnonzero((kept != weight).any(axis=-1))
-        if touched.size:
-            weight = kept
-            part = Data(data.f_hz, data.r_ohm, data.x_ohm, weight, data.sigma_ohm)
-            again = _solve(part.rows(touched), solution.parameters[touched], free)
-            solution = _replace(solution, touched, again)
-            data = part
-    return _finish(data, solution, free)
+    """Fit rows from ``begin`` (B, P), moving the parameters ``free``; with ``rejecting``, lone wild points are dropped.
+
+    A sweep with points that step out of line, and more misfit than it has noise, is fitted a second time without them.
+    They come back where that fit explains them; the second way is taken where it leaves clearly less.
+    """
+    if not rejecting:
+        return _finish(data, _solve(data, begin, free), free)
+    fitted = _dropping(data, begin, free)
+    doubtful, typical = bounce.suspects(data)
+    rows = np.flatnonzero(doubtful.any(axis=-1) & ~(fitted.relative_rms < _UNEXPLAINED * typical))
+    if rows.size == 0:
+        return fitted
+    second = _doubting(data.rows(rows), begin[rows], free, doubtful[rows])
+    better = second.converged & (second.scale < _CLEARLY_LESS * fitted.scale[rows])
+    return fitted.replaced(rows[better], second.rows(np.flatnonzero(better)))
 
 
-def _solve(data: Data, begin: Floats, free: tuple[int, ...]) -> solver.Solution:
+def as_it_stands(data: Data, parameters: Floats, free: tuple[int, ...]) -> Fitted:
+    """Rows at given parameters, nothing moved."""
+    return _finish(
+        data, solver.solve(_evaluator(model.misfit_and_slopes, data, free), parameters, free, iterations=0), free
+    )
+
+
+def _dropping(data: Data, begin: Floats, free: tuple[int, ...]) -> Fitted:
+    """Solve, drop lone wild points once, and solve those rows again."""
+    fitted = _finish(data, _solve(data, begin, free), free)
+    kept = data.weight * ~bounce.lone_wild(model.misfit(fitted.parameters, data), data.weight)
+    touched = np.flatnonzero((kept != data.weight).any(axis=-1))
+    if touched.size == 0:
+        return fitted
+    part = data.weighted(kept).rows(touched)
+    again = _solve(part, fitted.parameters[touched], free, afar=False)
+    return fitted.replaced(touched, _finish(part, again, free))
+
+
+def _doubting(data: Data, begin: Floats, free: tuple[int, ...], doubtful: NDArray[np.bool_]) -> Fitted:
+    """Solve without the doubtful points, take back those that are explained, and solve again."""
+    trusted = _solve(data.weighted(data.weight * ~doubtful), begin, free)
+    wild = bounce.stubborn(model.misfit(trusted.parameters, data), data.weight, doubtful)
+    part = data.weighted(data.weight * ~wild)
+    return _finish(part, _solve(part, trusted.parameters, free, afar=False), free)
+
+
+def _solve(data: Data, begin: Floats, free: tuple[int, ...], *, afar: bool = True) -> solver.Solution:
+    """From afar by logarithms first, then to the likelihood's own root."""
+    if afar:
+        rough = solver.solve(_evaluator(model.log_misfit_and_slopes, data, free), begin, free, tolerance=_ROUGH)
+        begin = np.where(np.isfinite(rough.parameters), rough.parameters, begin)
+    return solver.solve(_evaluator(model.misfit_and_slopes, data, free), begin, free)
+
+
+def _evaluator(misfit: _Misfit, data: Data, free: tuple[int, ...]) -> solver.Evaluate:
     def evaluate(parameters: Floats, rows: solver.Index) -> tuple[Floats, list[Floats], Floats]:
         # all rows: no copy
         part = data if rows.size == len(data.f_hz) else data.rows(rows)
         with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
-            return model.misfit_and_slopes(parameters, part, free)
+            return misfit(parameters, part, free)
 
-    return solver.solve(evaluate, begin, free)
-
-
-def _replace(solution: solver.Solution, rows: NDArray[np.intp], new: solver.Solution) -> solver.Solution:
-    parameters, cost = solution.parameters.copy(), solution.cost.copy()
-    normal, converged = solution.normal.copy(), solution.converged.copy()
-    parameters[rows], cost[rows], normal[rows], converged[rows] = new.parameters, new.cost, new.normal, new.converged
-    return solver.Solution(parameters, cost, normal, converged)
+    return evaluate
 
 
 def _finish(data: Data, solution: solver.Solution, free: tuple[int, ...]) -> Fitted:
@@ -117,18 +167,6 @@ def _lag_one(data: Data, rm: Floats, xm: Floats) -> Floats:
         alike = alike + (part[:, 1:] * part[:, :-1]).sum(axis=-1)
         all_of_it = all_of_it + (part * part).sum(axis=-1)
     return np.asarray(alike / all_of_it)
-
-
-def _lone_wild(value: Floats, weight: Floats) -> NDArray[np.bool_]:
-    """Points far off while both neighbours are not: a misfit of the model itself is never alone."""
-    n = weight.shape[-1]
-    size = np.sqrt(value[:, :n] ** 2 + value[:, n:] ** 2)
-    if n < 8:
-        return np.zeros(weight.shape, dtype=bool)
-    typical = start.median(size, weight > 0)[:, None]
-    padded = np.pad(size, ((0, 0), (1, 1)))
-    beside = np.maximum(padded[:, :-2], padded[:, 2:])
-    return np.asarray((size > WILD * np.maximum(typical, 1e-12)) & (size > 4 * beside) & (weight > 0))
 
 
 def judge_fit(data: Data, fitted: Fitted, window: tuple[float, float] | None) -> NDArray[np.str_]:

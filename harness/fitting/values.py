@@ -17,6 +17,7 @@ from harness.characteristics import CHARACTERISTICS
 from harness.circuits import coupling, frequencies, resonator
 from harness.circuits.resonator import Circuit
 from harness.fitting import model
+from harness.fitting.trial import LEAST_KNOWN_C0
 from harness.records import Caveat, Floats, Value
 
 _STEP = 1e-5
@@ -50,7 +51,6 @@ class Shifts:
 
 
 _MODEL_SHARES = {"span": 1 / np.sqrt(3), "place": 1 / np.sqrt(3), "background": np.sqrt(1 - 2 / np.pi)}
-_LEAST_KNOWN_C0 = 0.3  # relative u of C0 beyond which the sweep has not reached what lies beside the resonance
 _BESIDE = ("fp", "fn", "fa", "zn", "c0", "tan_delta", "m", "keff", "kp", "kt", "k31", "k33", "phase_max")
 
 
@@ -140,10 +140,8 @@ def with_uncertainty(
         budget = {"fit": float(np.sqrt(max(slope @ covariance @ slope, 0.0))) if np.isfinite(slope).all() else np.nan}
         for name, other in shifted.items():
             shift = abs(other[key] - value)
-            if name in _MODEL_SHARES:
-                budget["model"] = float(np.hypot(budget.get("model", 0.0), shift * _MODEL_SHARES[name]))
-            else:
-                budget[name] = shift
+            part = "model" if name in _MODEL_SHARES else name
+            budget[part] = float(np.hypot(budget.get(part, 0.0), shift * _MODEL_SHARES.get(name, 1.0)))
         budget["model"] = float(np.hypot(budget.get("model", 0.0), definition.get(key, 0.0)))
         budget |= accuracy(key, value, u_z_relative, u_f_relative)
         budgets[key] = {name: part for name, part in budget.items() if part > 0}
@@ -174,7 +172,7 @@ def _shifted(size: int, shifts: Shifts, wanted: Wanted) -> dict[str, dict[str, f
 def _reached(values: dict[str, Value]) -> dict[str, Value]:
     """The values without those that hang on a capacitance which the sweep does not tell."""
     c0 = values["c0"]
-    if c0.value is not None and c0.u is not None and c0.u < _LEAST_KNOWN_C0 * abs(c0.value):
+    if c0.value is not None and c0.u is not None and c0.u < LEAST_KNOWN_C0 * abs(c0.value):
         return values
     return {key: Value(None, None, value.unit) if key in _BESIDE else value for key, value in values.items()}
 

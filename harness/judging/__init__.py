@@ -3,8 +3,8 @@
 PURE: text and numbers in, values out; time and files stay outside. May import circuits, correction, records,
 characteristics, quantities, errors, toml, pydantic, NumPy and scipy.special; never a file, clock or wire.
 
-- ``limit_file`` reads limits through ``harness.toml``: ``schema`` (keys and values), ``limit_checks`` (keys against each
-  other), ``loading`` (→ LimitSet);
+- ``limit_file`` reads limits through ``harness.toml``: ``schema`` (keys and values), ``limit_checks`` (keys against
+  each other), ``loading`` (→ LimitSet);
 - ``judge`` decides: ``contact`` and ``referring`` before it, ``requirements`` one by one, ``wording`` for sentences;
 - ``risk`` is for a lot, ``application`` for board and droplets, ``explaining`` for people who read limits.
 

@@ -54,8 +54,8 @@ def figures(values: Mapping[str, Value], spec: ApplicationSpec) -> tuple[dict[st
     found: dict[str, Value] = {}
     caveats: list[Caveat] = []
     fs = values.get("fs")
-    if fs is not None and fs.value is not None:
-        share = drive_share(fs.value, fs.u or 0.0, spec)
+    if fs is not None and fs.value is not None and fs.u is not None:
+        share = drive_share(fs.value, fs.u, spec)
         if share is not None and math.isfinite(share):
             found["drive_share"] = Value(share, 0.0, "1")
     if not spec.mesh and spec.board_hz and spec.surface_tension_n_per_m and spec.density_kg_per_m3:
@@ -63,5 +63,5 @@ def figures(values: Mapping[str, Value], spec: ApplicationSpec) -> tuple[dict[st
         found["droplet"] = Value(size, None, "m")
         if not _LANG_RANGE_HZ[0] <= spec.board_hz <= _LANG_RANGE_HZ[1]:
             text = "Lang's formula was measured from 10 kHz to 800 kHz; this droplet size is extrapolated"
-            caveats.append(Caveat("extrapolated", "droplet", text))
+            caveats.append(Caveat("outside-formula", "droplet", text))
     return found, tuple(caveats)

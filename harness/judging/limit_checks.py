@@ -135,6 +135,32 @@ def _twice(kept: Tables) -> Iterator[Finding]:
         seen.setdefault(key, int(path[1]))
 
 
+def _one_frequency(kept: Tables) -> Iterator[Finding]:
+    """A part has one low-frequency capacitance in its record, so one frequency an element."""
+    first: dict[Any, Any] = {}
+    for path, block in tables(kept, "require"):
+        if block.get("characteristic") in LOW_FREQUENCY and "at" in block:
+            at = first.setdefault(block.get("element", 1), block["at"])
+            if _comparable(at) != _comparable(block["at"]):
+                text = f"'{block['at']}' is another frequency than '{at}' above."
+                yield Finding((*path, "at"), text, "Use one frequency for c_at and tan_delta_at.")
+
+
+def _comparable(at: Any) -> Any:
+    try:
+        return parse(at, "Hz") if isinstance(at, str) else at
+    except QuantityError:
+        return at
+
+
+def _information_only(kept: Tables) -> Iterator[Finding]:
+    """What is told for information cannot carry a verdict: it has no uncertainty of its own."""
+    for path, block in tables(kept, "require"):
+        if block.get("characteristic") == "droplet":
+            text = "droplet is told for information; it has no uncertainty and cannot be required."
+            yield Finding((*path, "characteristic"), text, "Require fs or drive_share.")
+
+
 def _at(kept: Tables) -> Iterator[Finding]:
     for path, block in tables(kept, "require"):
         name = block.get("characteristic")
@@ -241,11 +267,6 @@ def _application(kept: Tables) -> Iterator[Finding]:
         if name == "drive_share" and not {"board", "loaded_q"} <= block.keys():
             remedy = "Write board and loaded_q in [application]."
             yield Finding(where, "drive_share needs the board and the loaded Q.", remedy, here)
-        elif name == "droplet" and block.get("mesh") is True:
-            yield Finding(where, "the mesh sets the droplet size, not the frequency.", "Leave droplet out.")
-        elif name == "droplet" and ("board" not in block or not (liquid in LIQUIDS or figures)):
-            remedy = "Write board and liquid in [application]."
-            yield Finding(where, "droplet needs the board and the liquid.", remedy, here)
 
 
 CHECKS: tuple[Callable[[Tables], Iterator[Finding]], ...] = (
@@ -254,6 +275,8 @@ CHECKS: tuple[Callable[[Tables], Iterator[Finding]], ...] = (
     _min_max,
     _no_limit,
     _twice,
+    _one_frequency,
+    _information_only,
     _at,
     _kind,
     _limits_in_window,

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from scipy.special import ndtri
 
@@ -83,8 +83,11 @@ def decide(requirement: Requirement, value: Value | None, caveats: tuple[Caveat,
             text = f"the uncertainty of {wording.label(requirement)} is not known"
             return Decision(NONE, Reason("no-uncertainty", requirement.characteristic, value.value, None, text))
         u = 0.0
-    decision = _rule(requirement, value.value, u)
+    if any(c.code == "extrapolated" and c.characteristic == requirement.characteristic for c in caveats):
+        return _missing(requirement, caveats)
     floor = [c for c in caveats if c.code == "floor" and c.characteristic == requirement.characteristic]
+    # an absence is a statement with a floor under any rule: what could not have been seen is not proven away
+    decision = _rule(replace(requirement, rule="guarded") if floor else requirement, value.value, u)
     if floor and decision.reason is not None and decision.reason.code == "too-close":
         # nothing was seen: the sweep was too weak to show enough, which speaks of the sweep and not of the part
         text = f"the sweep cannot show {wording.label(requirement)} well enough: {floor[0].text}"

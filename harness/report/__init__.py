@@ -5,7 +5,7 @@ May import statistics, judging, records, characteristics, quantities, errors, ri
 a socket, or anything from another host: every page works offline and runs no script.
 
 - ``words`` (marks, phrases, cautions) and ``amounts`` (numbers with units) are shared by all;
-- ``terminal`` makes rich renderables;
+- ``terminal`` makes rich renderables, ``hanging`` wraps sentences and chooses what suits a terminal's width;
 - ``lot_page`` is the model of a lot's page, ``lot_view`` puts it in words, ``templates/lot.html.j2`` lays it out,
   ``svg`` and ``histogram`` draw; ``lot_csv`` and ``json_form`` are for programs.
 

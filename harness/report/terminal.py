@@ -18,12 +18,17 @@ from harness.judging.explaining import explanation
 from harness.judging.wording import label
 from harness.records import Caveat, Fit, FitStatus, LimitSet, Record, Requirement, Value
 from harness.report.amounts import NOTHING, Scale, scale_for, uncertain
+from harness.report.hanging import ByWidth, Under
 from harness.report.words import LOT_WORDS, MARKS, counted, lot_mark, lot_sentence, percent, phrase, visible
 from harness.statistics.capability import Capability, Index
 from harness.statistics.lot import LotStatistics, requirements_by_key
 from harness.statistics.yields import FINAL, FIRST_PASS, Share, Yields
 
 __all__ = ["fit_table", "history_table", "limits_table", "lot_summary", "soundness", "uncertain", "verdict_text"]
+
+# columns from which the whole table stands without folding numbers
+_CAPABILITIES_WIDE = 130
+_HISTORY_WIDE = 120
 
 
 def verdict_text(verdict: str, grade: str | None = None) -> Text:
@@ -100,25 +105,38 @@ def _fail_reasons(yields: Yields) -> Table:
 
 
 def _capabilities(statistics: LotStatistics, limits: LimitSet) -> RenderableType:
-    right = ("n", "mean", "sd", "least", "greatest")
-    table = _table("", "unit", *right, "allowed", "Pp", "Ppk", right=right)
     required = requirements_by_key(limits)
-    notes = []
     shown = {key: one for key, one in statistics.characteristics.items() if key in required}
-    for key, one in shown.items():
-        needs = required.get(key)
-        scale = scale_for(one.characteristic, needs, one.values)
-        name = _name(one, needs)
-        cells = [scale.text(value, one.sd) for value in (one.mean, one.sd, one.min, one.max)]
-        table.add_row(name, scale.sign, str(one.n), *cells, _allowed(one, scale), _index(one.pp), _index(one.ppk))
-        if one.note and needs is not None:
-            notes.append(_plain(f"{name}: {one.note}", "dim"))
+    tables = [_capability_table(shown, required, wide=wide) for wide in (True, False)]
+    notes = [_plain(f"{_name(one, required[key])}: {one.note}", "dim") for key, one in shown.items() if one.note]
     others = len(statistics.characteristics) - len(shown)
     if others:
         notes.append(Text(f"{others} more characteristics without limits: see --json, --csv or --html.", style="dim"))
+    notes += [_plain(f"Over: {one}.", "dim") for one in dict.fromkeys(one.population for one in shown.values())]
     confidence = f"Limits of Pp and Ppk at {100 * statistics.confidence:g} %, for normally distributed values."
-    populations = dict.fromkeys(one.population for one in shown.values())
-    return Group(table, *notes, *[_plain(f"Over: {one}.", "dim") for one in populations], Text(confidence, style="dim"))
+    elsewhere = (
+        "Pp and Ppk for normally distributed values; their confidence limits: see --json, --html or a wider window."
+    )
+    return Group(
+        ByWidth(tables[0], tables[1], _CAPABILITIES_WIDE),
+        *notes,
+        ByWidth(Text(confidence, style="dim"), Text(elsewhere, style="dim"), _CAPABILITIES_WIDE),
+    )
+
+
+def _capability_table(shown: Mapping[str, Capability], required: Mapping[str, Requirement], *, wide: bool) -> Table:
+    """All there is where it is ``wide``; else without the outer values and the limits of Pp and Ppk."""
+    ends = ("least", "greatest") if wide else ()
+    right = ("n", "mean", "sd", *ends)
+    table = _table("", "unit", *right, "allowed", "Pp", "Ppk", right=right)
+    for key, one in shown.items():
+        needs = required[key]
+        scale = scale_for(one.characteristic, needs, one.values)
+        values = (one.mean, one.sd, one.min, one.max)[: 4 if wide else 2]
+        cells = [scale.text(value, one.sd) for value in values]
+        indices = [_index(index, limits=wide) for index in (one.pp, one.ppk)]
+        table.add_row(_name(one, needs), scale.sign, str(one.n), *cells, _allowed(one, scale), *indices)
+    return table
 
 
 def _name(one: Capability, requirement: Requirement | None) -> str:
@@ -135,9 +153,11 @@ def _allowed(one: Capability, scale: Scale) -> str:
     return f"≤ {greatest}" if one.least is None else f"{least} to {greatest}"
 
 
-def _index(index: Index) -> str:
+def _index(index: Index, *, limits: bool) -> str:
     if index.value is None:
         return NOTHING
+    if not limits:
+        return f"{index.value:.2f}"
     return f"{index.value:.2f} ({index.low:.2f} to {index.high:.2f})"
 
 
@@ -160,9 +180,26 @@ class StoredLike(Protocol):
 
 
 def history_table(serial: str, found: Sequence[StoredLike]) -> RenderableType:
-    """Every attempt at a part, in the order given."""
+    """Every attempt at a part, in the order given: as a table, or in blocks where that is too wide."""
+    title = _plain(f"{serial}: {counted(len(found), 'attempt', 'attempts')}", "bold")
+    blocks = [block for stored in found for block in _attempt_block(stored)]
+    return ByWidth(_history_rows(title, found), Group(title, *blocks), _HISTORY_WIDE)
+
+
+def _attempt_block(stored: StoredLike) -> list[RenderableType]:
+    opening, judgement = stored.record.opening, stored.record.judgement
+    verdict = verdict_text(judgement.verdict)
+    line = Text(f"{verdict.plain:<14}  ", style=verdict.style)
+    grade = f"grade {judgement.grade}  " if judgement.grade else ""
+    tries = f"try {opening.number}" + ("" if stored.record.final else " …")
+    where = f"{opening.lot}  {opening.part_number} {stored.revision}  {tries}  record {stored.seq}"
+    line.append(visible(f"{grade}{short_time(stored.record.at)}  {where}"), style="not bold default")
+    return [line, *[Under(reason.text) for reason in judgement.reasons[:1]]]
+
+
+def _history_rows(title: Text, found: Sequence[StoredLike]) -> Table:
     table = _table("at", "lot", "limits", "try", "verdict", "reason", "record", "hash", right=("try",))
-    table.title = _plain(f"{serial}: {counted(len(found), 'attempt', 'attempts')}", "bold")
+    table.title = title
     for stored in found:
         opening, judgement = stored.record.opening, stored.record.judgement
         table.add_row(

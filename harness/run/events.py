@@ -10,7 +10,7 @@ from harness.store import Written
 
 @dataclass(frozen=True, slots=True)
 class Ready:
-    """The station is open and waits for parts; ``continued``: so many parts of this lot were judged before."""
+    """The station is open and waits for parts; ``continued``: so many records this lot had before."""
 
     station: str
     lot: str

@@ -10,7 +10,7 @@ from harness.judging.requirements import refuse_empty_zones
 from harness.planning.expected import least_u
 from harness.records import Record, Verdict
 from harness.run.events import BenchTrouble, Ended, Event, Interrupted, Ready, Refused, Waiting
-from harness.run.part import Job, attempt
+from harness.run.part import Job, attempt, early_codes
 from harness.run.serials import Serial, SerialSource, Wait, pattern_fault
 from harness.run.watch import LotWatch
 from harness.station import Station
@@ -33,12 +33,12 @@ def screen_lot(
     store, bench = station.store, station.bench
     refuse_empty_zones(job.limits, least_u(job.limits, bench.instrument, job.conditions))
     bench.refuse_untellable(grade.name for grade in job.limits.grades)
-    store.open_lot(job.lot, job.limits, job.operator, job.clock())
+    lot = store.open_lot(job.lot, job.limits, job.operator, job.clock())
     for written in store.close_interrupted(job.clock(), job.software):
         yield Interrupted(written)
     finals = {(one.serial, one.element): one.verdict for one in store.lot_summaries(job.lot) if one.final}
     watch, refused = LotWatch(job.limits.lot, job.limits.requirements, finals), 0
-    yield Ready(station.name, job.lot, len(finals), source.prompt)
+    yield Ready(station.name, job.lot, lot.records, source.prompt)
     for found in _serials(bench, store, job, source, stopping):
         if not isinstance(found, Serial):
             refused += isinstance(found, Refused)
@@ -76,7 +76,8 @@ def _ahead(
     refusal = _refusal(store, job, serial)
     if refusal is not None:
         return refusal
-    there = yield from _part(bench, source, f"Load part {serial.text}.", stopping)
+    then = ", then Enter. Ctrl-D ends the lot." if source.asks else "."
+    there = yield from _part(bench, source, f"Load part {serial.text}{then}", stopping)
     if there:
         return serial
     if stopping() or not bench.has_handler:
@@ -94,14 +95,16 @@ def _after(
     serial = yield from _code(bench, source, stopping)
     if serial is Wait.END:
         return serial
-    refusal = (
-        _refusal(store, job, serial)
-        if isinstance(serial, Serial)
-        else Refused("", f"no code was read within {_SCAN_S:g} s; the part goes to hold.")
-    )
-    if refusal is None:
-        return serial
-    bench.signal("hold", None)
+    if isinstance(serial, Serial):
+        refusal = _refusal(store, job, serial)
+        if refusal is None:
+            return serial
+    else:
+        refusal = Refused("", f"no code was read within {_SCAN_S:g} s; the part goes to hold.")
+    if bench.has_handler:
+        if not isinstance(serial, Serial) or serial.identity == "scanned":
+            yield from early_codes(bench, refusal.serial)
+        bench.signal("hold", None)
     return refusal
 
 

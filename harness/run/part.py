@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from harness import planning
-from harness.analysis import analyse
+from harness.analysis import analyse, low_frequency_hz
 from harness.bench import Bench, BenchFault
 from harness.correction import fixture
 from harness.records import (
@@ -89,13 +89,14 @@ def attempt(
         at=job.clock(),
     )
     written = store.write_record(record, attempt_id)
-    yield from _early_codes(bench, serial)
+    if identity == "scanned":  # where serials come from elsewhere, what a scanner reads names no part
+        yield from early_codes(bench, serial)
     yield Recorded(record, written)
     return record
 
 
-def _early_codes(bench: Bench, serial: str) -> Iterator[Event]:
-    """Take no code scanned while this part was measured for the next part's: that one is not in the fixture yet."""
+def early_codes(bench: Bench, serial: str) -> Iterator[Event]:
+    """Take off the line what was scanned since this part's own code: the next part is not in the fixture yet."""
     try:
         codes = bench.early_codes()
     except BenchFault as fault:
@@ -103,8 +104,7 @@ def _early_codes(bench: Bench, serial: str) -> Iterator[Event]:
         return
     for code in codes:
         if code.strip() != serial:
-            text = f"scanned while {serial} was measured. Scan it again once its part is in the fixture."
-            yield Refused(code, text)
+            yield Refused(code, "its part was not in the fixture yet. Scan it again when it is.")
 
 
 def _measure(bench: Bench, job: Job, serial: str, first: Plan) -> Generator[Event, None, Sweep]:
@@ -114,6 +114,9 @@ def _measure(bench: Bench, job: Job, serial: str, first: Plan) -> Generator[Even
     if spec.contact:
         yield Measuring(serial, "contact")
         readings.append(bench.reading("contact before", spec.contact.f_hz, spec.drive_v))
+    at_hz = low_frequency_hz(job.limits)
+    if at_hz is not None and (spec.contact is None or spec.contact.f_hz != at_hz):
+        readings.append(bench.reading("low-frequency", at_hz, spec.drive_v))
     yield Measuring(serial, "locate")
     f, z = bench.sweep(first)
     second = planning.resolve(f, fixture.correct(f, z, job.correction), job.limits)

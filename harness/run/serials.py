@@ -45,12 +45,16 @@ class SerialSource(Protocol):
 class FromScanner:
     """Each code the scanner reads is one part."""
 
-    prompt = "Load a part and scan its code."
     ahead = False
     asks = False
 
     def __init__(self, bench: Bench) -> None:
         self._bench = bench
+        self.prompt = (
+            "The handler brings the parts; the scanner reads their codes."
+            if bench.has_handler
+            else "Load a part and scan its code."
+        )
 
     def next(self, timeout_s: float) -> Serial | Wait:
         line = self._bench.scan(timeout_s)
@@ -118,7 +122,7 @@ class Numbered:
         self.prompt = (
             "Load the next part of the tray, then Enter. Ctrl-D ends the lot."
             if self.asks
-            else "Parts are numbered in the order they come."
+            else "Parts are numbered by tray and position, in the order they come."
         )
 
     def next(self, timeout_s: float) -> Serial | Wait:
@@ -170,7 +174,7 @@ def read_list(text: str, file: str, pattern: str | None) -> tuple[str, ...]:
 def pattern_fault(serial: str, pattern: str | None) -> str | None:
     """A sentence when ``serial`` does not match the part number's pattern or cannot be a serial at all."""
     if not serial.isprintable() or len(serial) > 80:
-        return f"serial {ascii(serial[:80])} has characters that cannot be printed, or more than 80."
+        return f"serial {serial[:80]!a} has characters that cannot be printed, or more than 80."
     if pattern is not None and not re.fullmatch(pattern, serial):
         return f"serial '{serial}' does not match this part number's pattern {pattern}."
     return None

@@ -89,7 +89,7 @@ class LotWatch:
         )
 
     def _reason_key(self, reasons: tuple[Reason, ...]) -> tuple[str, str] | None:
-        """What the first reason is about, and which limit it met: beyond it and too close to it are the same trouble."""
+        """What the first reason is about and which limit it met: beyond it or too close to it are one trouble."""
         if not reasons:
             return None
         first = reasons[0]

@@ -5,7 +5,7 @@ from __future__ import annotations
 from contextlib import ExitStack
 from pathlib import Path
 
-from harness.bench import Bench
+from harness.bench import Bench, check
 from harness.records import Conditions, Correction
 from harness.station.file import StationSpec
 from harness.station.lock import StationLock
@@ -45,8 +45,10 @@ class Station:
 def open_station(spec: StationSpec, path: Path, store_url: str, command: str, now: str, made_by: str) -> Station:
     """Take the station's lock, open its store for writing and its bench. Raises SetupError or StationError.
 
-    The store comes before the bench: nothing may be measured that could not be recorded.
+    The store comes before the bench: nothing may be measured that could not be recorded. A station file that names
+    what cannot be is refused before either, so that nothing is written.
     """
+    check(spec.devices)
     with ExitStack() as stack:
         lock = StationLock(path, command, now)
         stack.callback(lock.release)

@@ -2,19 +2,14 @@
 
 from __future__ import annotations
 
-import sys
-from pathlib import Path
-
 import numpy as np
 import pytest
+from circuit_examples import COLUMNS, DERIVED, EXAMPLES
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from harness.circuits import frequencies, resonator
 from harness.circuits.resonator import Circuit, from_elements
-
-sys.path.insert(0, str(Path(__file__).parent))
-from circuit_examples import COLUMNS, DERIVED, EXAMPLES
 
 
 def critical(circuit: Circuit) -> dict[str, float]:

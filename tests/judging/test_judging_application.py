@@ -74,4 +74,4 @@ def test_droplets_outside_langs_range_are_labelled(f_hz: float, labelled: bool) 
     """Outside 10 kHz to 800 kHz the droplet carries the caveat that it is extrapolated."""
     found, caveats = figures({}, replace(WATER, board_hz=f_hz))
     assert "droplet" in found
-    assert [caveat.code for caveat in caveats] == (["extrapolated"] if labelled else [])
+    assert [caveat.code for caveat in caveats] == (["outside-formula"] if labelled else [])

@@ -11,7 +11,7 @@ import textwrap
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from rich.console import Console, ConsoleOptions, RenderResult
+from rich.console import Console, ConsoleOptions, RenderableType, RenderResult
 from rich.text import Text
 
 from harness.report.words import visible
@@ -69,6 +69,18 @@ class Hanging:
         yield self.head.copy().append(first, style="not bold default")
         for line in rest:
             yield Text(" " * self.head.cell_len + line, no_wrap=True)
+
+
+@dataclass(frozen=True, slots=True)
+class ByWidth:
+    """``wide`` where there are ``least`` columns, else ``narrow``: a table that has to fold its numbers is no table."""
+
+    wide: RenderableType
+    narrow: RenderableType
+    least: int
+
+    def __rich_console__(self, console: Console, options: ConsoleOptions) -> RenderResult:
+        yield self.wide if options.max_width >= self.least else self.narrow
 
 
 def _lines(text: str, options: ConsoleOptions, indent: int) -> Iterator[str]:
