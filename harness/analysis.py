@@ -74,7 +74,8 @@ def _fit(sweep: Sweep, correction: Correction, choice: Choice, wanted: values.Wa
     z = fixture.correct(sweep.f_hz, sweep.z_ohm, correction)
     found = single.fit_one(sweep.f_hz, z, choice, noise_relative=sweep.noise_relative)
     if found.status is not FitStatus.OK:
-        return Fit(found.status, found.message, caveats=tuple(_data_caveats(found)))
+        left = found.relative_rms if np.isfinite(found.relative_rms) else None
+        return Fit(found.status, found.message, residual=Residual(left, 0), caveats=tuple(_data_caveats(found)))
     shifts = values.Shifts(_shifts(sweep, found, z, correction))
     numbers, budget = values.with_uncertainty(
         found.parameters, found.free, found.covariance, wanted, shifts, sweep.u_z_relative, sweep.u_f_relative
@@ -161,6 +162,8 @@ def _low_frequency(sweep: Sweep, correction: Correction, at_hz: float | None) ->
     if not near:
         return {}
     reading = _corrected(near[0], correction)
+    if not np.isfinite(reading.z_ohm) or not reading.z_ohm.imag:  # a short or an open has no capacitance
+        return {}
     y = 1 / reading.z_ohm
     c = y.imag / (2 * np.pi * reading.f_hz)
     loss = y.real / y.imag

@@ -147,7 +147,10 @@ class Mode:
 
 @dataclass(frozen=True, slots=True)
 class Residual:
-    """Misfit √mean(|ΔZ|²/|Z|²), and degrees of freedom (real numbers minus parameters)."""
+    """Misfit √mean(|ΔZ|²/|Z|²), and degrees of freedom (real numbers minus parameters).
+
+    Of a sweep without a resonance: the misfit that the best plain element (R, L, lossy C) leaves.
+    """
 
     relative_rms: float | None
     dof: int

@@ -202,8 +202,13 @@ def _tried(data: Data, grown: Grown, begins: Floats) -> list[Grown]:
     free = (*(k for k in grown.free if k < last), *range(last, last + model.BRANCH))
     fitted = trial.fit_branches(data.rows(np.zeros(len(begins), dtype=np.intp)), begins, free)
     ends = [Grown(fitted.rows(np.array([k])), free) for k in _distinct(fitted)]
-    settled = [_settled(data, more, last, grown) for more in ends]
-    return [more for more in settled if more.fitted.converged[0]]
+    low, high = used_hz(data)
+    inside = [low < np.exp(more.parameters[last]) < high for more in ends]
+    found = [more for more, within in zip(ends, inside, strict=True) if within]
+    if not inside[0]:
+        # of those that left the data the cheapest is enough
+        found.append(_beyond(data, ends[0], last, float(grown.parameters[model.FIRST_BRANCH + model.LN_Q])))
+    return [more for more in found if more.fitted.converged[0]]
 
 
 def _distinct(fitted: Fitted) -> list[int]:
@@ -213,14 +218,6 @@ def _distinct(fitted: Fitted) -> list[int]:
         if all(abs(fitted.cost[k] / fitted.cost[j] - 1) > 1e-6 for j in out):
             out.append(int(k))
     return out
-
-
-def _settled(data: Data, more: Grown, last: int, before: Grown) -> Grown:
-    """A new branch that left the data is held to what its slope can tell."""
-    low, high = used_hz(data)
-    if low < np.exp(more.parameters[last]) < high:
-        return more
-    return _beyond(data, more, last, float(before.parameters[model.FIRST_BRANCH + model.LN_Q]))
 
 
 def _beyond(data: Data, more: Grown, at: int, ln_q: float) -> Grown:

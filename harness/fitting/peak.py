@@ -1,7 +1,7 @@
 """One peak of a transmission log whose level means nothing: its frequency and its width, and no more.
 
-t(f) = b₀ + b₁x + A/(1 + jQ(f/f₀ − f₀/f)), x from −1 to 1 over the points used, with b and A complex: what passes beside the resonance and
-the fixture's delay are in b and in A's phase.
+t(f) = b₀ + b₁x + A/(1 + jQ(f/f₀ − f₀/f)), x from −1 to 1 over the points used, b and A complex: what passes beside
+the resonance and the fixture's delay are in b and in A's phase.
 """
 
 from __future__ import annotations
@@ -16,7 +16,7 @@ from harness.records import Complexes, FitStatus, Floats
 _REACH = 4.0  # half-power widths to either side of the peak
 _LEAST_WIDTH = 3  # points within the half-power width
 _LEAST_POINTS = 12
-_MOST_MISFIT = 0.03  # rms over the peak's height; a slow sweep of one resonance leaves less
+_MOST_MISFIT = 0.02  # rms over the peak's height; a slow sweep of one resonance leaves less
 _LEAST_HEIGHT = 10.0  # times the misfit
 
 
@@ -70,7 +70,8 @@ def _half_power(size: Floats, top: int) -> tuple[int | None, int | None]:
 
 def _fitted(f: Floats, t: Complexes, f0: float, width: float) -> Peak:
     begin = np.array([np.log(f0), np.log(f0 / width), *_linear_start(f, t, f0, f0 / width)])
-    found = solver.solve(_evaluator(f, t), begin[None, :], tuple(range(8)))
+    evaluate = _evaluator(f, t)
+    found = solver.solve(evaluate, begin[None, :], tuple(range(8)))
     ln_f, ln_q, a_re, a_im = (float(part) for part in found.parameters[0, :4])
     dof = 2 * f.size - 8
     rms, height = float(np.sqrt(found.cost[0] / (2 * f.size))), float(np.hypot(a_re, a_im))
@@ -82,10 +83,19 @@ def _fitted(f: Floats, t: Complexes, f0: float, width: float) -> Peak:
             "swept so fast that it rings, or several modes at once; sweep more slowly, over less"
         )
         return Peak(FitStatus.NOT_RESOLVED, text)
-    covariance = solver.covariance(found.normal)[0] * found.cost[0] / dof * dof / (dof - 2)
+    lag = _lag_one(evaluate(found.parameters, np.arange(1))[0][0])
+    # neighbours that err alike tell less than they seem to; and Student's t for the scale
+    covariance = solver.covariance(found.normal)[0] * found.cost[0] / (dof - 2) * (1 + lag) / (1 - lag)
     u_ln_f, u_ln_q = (float(np.sqrt(covariance[k, k])) for k in (0, 1))
     span = (float(f[0]), float(f[-1]))
     return Peak(FitStatus.OK, "peak found and resolved", at, at * u_ln_f, q, q * u_ln_q, misfit, dof, span)
+
+
+def _lag_one(value: Floats) -> float:
+    """Correlation of neighbouring misfits, from 0 to 0.9."""
+    n = value.size // 2
+    alike = sum(float((part[1:] * part[:-1]).sum()) for part in (value[:n], value[n:]))
+    return float(np.clip(alike / max(float((value**2).sum()), 1e-300), 0.0, 0.9))
 
 
 def _linear_start(f: Floats, t: Complexes, f0: float, q: float) -> list[float]:

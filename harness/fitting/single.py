@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from harness.fitting import growth, model, modes, start, trial
+from harness.fitting import growth, model, modes, plain, start, trial
 from harness.fitting.growth import Grown
 from harness.fitting.model import Data
 from harness.fitting.trial import Fitted
@@ -36,7 +36,7 @@ class Choice:
 @dataclass(frozen=True, slots=True, eq=False)
 class SingleFit:
     """``status`` with a sentence; where ok, the parameters ``(P,)`` (wanted branch first), the free ones' scaled
-    covariance, the noise found (relative), the misfit, the data used and the floor for further modes. ``sloped``: the
+    covariance, the noise found (relative), the misfit (else the misfit that a plain element leaves), the data used and the floor for further modes. ``sloped``: the
     parameters under the slope of the background that the data, which show none, would still allow (else None)."""
 
     status: FitStatus
@@ -72,10 +72,8 @@ def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: f
     begin, located = _locate(whole, choice)
     # what bounced stays out from here on: each larger circuit would have to find it again
     whole = whole.weighted(located.weight)
-    data, grown = _grow(whole, located, choice)
-    if not _fits(data, grown, choice):
-        data, grown = _second_look(whole, choice, begin, located, (data, grown))
-    word = str(trial.judge_fit(data, grown.fitted, choice.window_hz)[0])
+    data, grown = _best(whole, choice, begin, located)
+    word = _word(data, grown, choice)
     if word != "ok":
         status = FitStatus(word)
         return _refused(status, _explain(status, data, grown.fitted), f, z, dropped)
@@ -84,41 +82,51 @@ def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: f
     return _finish(data, grown, choice, dropped, noise_relative)
 
 
-def _grow(
-    whole: Data, located: Fitted, choice: Choice, *, slope_first: bool = True, nearby: bool = False
-) -> tuple[Data, Grown]:
-    """The points kept, and the located branch with what they ask for beside it; ``nearby``: located on few of them."""
+def _best(whole: Data, choice: Choice, begin: Floats, located: Fitted) -> tuple[Data, Grown]:
+    """The points kept, and the best of several ways from the located branch to what the data ask for beside it.
+
+    The first that leaves nothing which neighbours have in common is taken, else the one of least information criterion.
+    """
     data = _cut(whole, located, choice)
-    free = growth.all_but_rs(located.parameters)
-    if data is not whole:
-        located = trial.fit_branches(data, located.parameters, free)
-    elif nearby:
+    one = Grown(located if data is whole else _again(data, located), growth.all_but_rs(located.parameters))
+    sloped = growth.bear_slope(data, one)
+    if _fits(data, sloped, choice):
+        return data, _with_modes(data, sloped, choice)
+    ways = [(data, growth.bear_slope(data, _with_modes(data, one, choice)))]
+    if not _fits(*ways[0], choice):
+        ways += [(data, _with_modes(data, sloped, choice)), *_nearby(whole, choice, begin)]
+    sound = [way for way in ways if _word(*way, choice) == "ok"]
+    # as many points in each, or nothing could be compared
+    alike = [way for way in sound if way[0].weight.sum() == sound[0][0].weight.sum()]
+    return min(alike, key=lambda way: way[1].information) if alike else ways[0]
+
+
+def _nearby(whole: Data, choice: Choice, begin: Floats) -> list[tuple[Data, Grown]]:
+    """From the neighbourhood of the conductance peak, which a stronger mode elsewhere does not spoil."""
+    ways = []
+    for close in _close(whole, choice, begin):
+        data, free = _cut(whole, close, choice), growth.all_but_rs(close.parameters)
         # solving for one branch on everything would lose it again
-        located = trial.as_it_stands(data, located.parameters, free)
-    begin = Grown(located, free)
-    count = (choice.branches, choice.most_branches)
-    if slope_first:
-        return data, growth.add_modes(data, growth.bear_slope(data, begin), choice.window_hz, *count)
-    return data, growth.bear_slope(data, growth.add_modes(data, begin, choice.window_hz, *count))
+        fitted = trial.as_it_stands(data, close.parameters, free) if data is whole else _again(data, close)
+        ways.append((data, growth.bear_slope(data, _with_modes(data, Grown(fitted, free), choice))))
+    return ways
+
+
+def _again(data: Data, fitted: Fitted) -> Fitted:
+    return trial.fit_branches(data, fitted.parameters, growth.all_but_rs(fitted.parameters))
+
+
+def _with_modes(data: Data, grown: Grown, choice: Choice) -> Grown:
+    return growth.add_modes(data, grown, choice.window_hz, choice.branches, choice.most_branches)
+
+
+def _word(data: Data, grown: Grown, choice: Choice) -> str:
+    return str(trial.judge_fit(data, grown.fitted, choice.window_hz)[0])
 
 
 def _fits(data: Data, grown: Grown, choice: Choice) -> bool:
     """Is there a resonance, and little left over that neighbours have in common?"""
-    word = str(trial.judge_fit(data, grown.fitted, choice.window_hz)[0])
-    return word == "ok" and float(grown.fitted.lag_one[0]) <= growth.ALIKE
-
-
-def _second_look(
-    whole: Data, choice: Choice, begin: Floats, located: Fitted, first: tuple[Data, Grown]
-) -> tuple[Data, Grown]:
-    """Other ways to the circuit: with modes before the background's slope, which may stand where a mode belongs; and
-    from the neighbourhood of the conductance peak, which a mode elsewhere does not spoil."""
-    ways = [first, _grow(whole, located, choice, slope_first=False)]
-    ways += [_grow(whole, close, choice, slope_first=False, nearby=True) for close in _close(whole, choice, begin)]
-    sound = [way for way in ways if str(trial.judge_fit(way[0], way[1].fitted, choice.window_hz)[0]) == "ok"]
-    # as many points in each, or nothing could be compared
-    alike = [way for way in sound if way[0].weight.sum() == sound[0][0].weight.sum()]
-    return min(alike, key=lambda way: way[1].information) if alike else first
+    return _word(data, grown, choice) == "ok" and float(grown.fitted.lag_one[0]) <= growth.ALIKE
 
 
 def _close(whole: Data, choice: Choice, begin: Floats) -> list[Fitted]:
@@ -226,9 +234,9 @@ def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:
 
 
 def _refused(status: FitStatus, message: str, f: Floats, z: Complexes, dropped: int) -> SingleFit:
-    empty = np.full(7, np.nan)
+    empty, left = np.full(7, np.nan), plain.misfit(f, z)
     data = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)))
-    return SingleFit(status, message, empty, (), np.empty((0, 0)), np.nan, np.nan, 0, data, np.inf, dropped)
+    return SingleFit(status, message, empty, (), np.empty((0, 0)), np.nan, left, 0, data, np.inf, dropped)
 
 
 def _explain(status: FitStatus, data: Data, fitted: Fitted) -> str:

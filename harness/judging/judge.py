@@ -8,6 +8,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 
 from harness.judging.application import figures
@@ -37,6 +38,13 @@ _STATUS_TEXT = {
 }
 
 
+_PLAIN = 0.02  # misfit that a plain element may leave, beside five times the noise
+
+
+def _plain_misfit(noise_relative: float | None) -> float:
+    return max(_PLAIN, 5 * math.sqrt(2) * (noise_relative or 0.0))
+
+
 def judge(
     fit: Fit,
     limits: LimitSet,
@@ -60,7 +68,7 @@ def judge(
     spoilt = spoilt if repeat is None else (*spoilt, repeat)
     if spoilt:
         return Judgement(Verdict.NONE, None, spoilt, values, caveats)
-    unfit = _unfit(fit, limits, contact)
+    unfit = _unfit(fit, limits, contact, noise_relative)
     if unfit is not None:
         verdict, reason = unfit
         return Judgement(verdict, None, (reason,), values, caveats)
@@ -100,12 +108,19 @@ def _contact_caveat(limits: LimitSet, contact: ContactCheck) -> tuple[Caveat, ..
     return (Caveat("contact-not-proven", None, "the contact was not checked both before and after the sweep"),)
 
 
-def _unfit(fit: Fit, limits: LimitSet, contact: ContactCheck) -> tuple[Verdict, Reason] | None:
+def _unfit(
+    fit: Fit, limits: LimitSet, contact: ContactCheck, noise_relative: float | None
+) -> tuple[Verdict, Reason] | None:
     """A verdict that the fit's status or its place outside the search window gives; None: judge the requirements."""
     proven = Verdict.FAIL if contact.proven else Verdict.NONE
     unproven = "" if contact.proven else "; the contact is not proven"
     if fit.status is not FitStatus.OK:
         text = fit.message.rstrip(".") or _STATUS_TEXT[fit.status]
+        left = fit.residual.relative_rms
+        if fit.status is FitStatus.NO_RESONANCE and (left is None or left > _plain_misfit(noise_relative)):
+            # a part that has lost its resonance is a plain capacitor; a bounced contact is not, and proves nothing
+            told = "the sweep shows neither a resonance nor a plain element"
+            return Verdict.NONE, Reason("disturbed", None, left, None, f"{told}; is the contact loose?")
         if fit.status is FitStatus.NO_RESONANCE:
             return proven, Reason("no-resonance", "fs", None, None, text + unproven)
         return Verdict.NONE, Reason(str(fit.status), None, None, None, text)

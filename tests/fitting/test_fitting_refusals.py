@@ -61,8 +61,8 @@ def test_pure_noise_is_never_a_resonance(kind: str, rng: np.random.Generator) ->
 
 @pytest.mark.parametrize("kind", list(NOISES))
 def test_pure_noise_is_never_a_resonance_with_care(kind: str, rng: np.random.Generator) -> None:
-    """Nor by the careful fit of one sweep, which may add branches (12 sweeps of each kind)."""
-    z = NOISES[kind](rng)[:12]
+    """Nor by the careful fit of one sweep, which may add branches (8 sweeps of each kind)."""
+    z = NOISES[kind](rng)[:8]
     found = [fit_one(F, row, Choice(WINDOW)).status for row in z]
     assert FitStatus.OK not in found
 

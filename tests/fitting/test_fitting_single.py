@@ -25,9 +25,9 @@ def seen(fit: SingleFit) -> list[tuple[float, float, float]]:
 
 
 def test_clean_sweeps_show_no_unwanted_mode(rng: np.random.Generator) -> None:
-    """Of 100 one-mode sweeps at most one shows a mode that is not there."""
+    """Of 60 one-mode sweeps at most one shows a mode that is not there."""
     alarms = 0
-    for _ in range(100):
+    for _ in range(60):
         circuit = one_branch(fs=rng.uniform(1.62e6, 1.68e6), q=rng.uniform(80, 400), r=rng.uniform(3, 10))
         alarms += bool(seen(fit_one(F, noisy(resonator.impedance(circuit, F), NOISE, rng), Choice(WINDOW))))
     assert alarms <= 1
@@ -36,7 +36,7 @@ def test_clean_sweeps_show_no_unwanted_mode(rng: np.random.Generator) -> None:
 def test_floor_is_honest(rng: np.random.Generator) -> None:
     """A mode of twice the floor's conductance, planted anywhere beyond two bandwidths of fs, is found in ≥ 95 %."""
     found = 0
-    for _ in range(60):
+    for _ in range(40):
         circuit = one_branch(fs=rng.uniform(1.62e6, 1.68e6), q=200.0, r=5.0)
         fs = float(circuit.f_hz[0])
         clean = fit_one(F, noisy(resonator.impedance(circuit, F), NOISE, rng), Choice(WINDOW))
@@ -46,20 +46,20 @@ def test_floor_is_honest(rng: np.random.Generator) -> None:
         planted = with_modes(circuit, (at, 200.0, 2 * clean.floor))
         modes = seen(fit_one(F, noisy(resonator.impedance(planted, F), NOISE, rng), Choice(WINDOW)))
         found += any(abs(f / at - 1) < 1 / 200 for f, _, _ in modes)
-    assert found >= 57
+    assert found >= 38
 
 
 def test_planted_modes_come_back_within_their_uncertainty(rng: np.random.Generator) -> None:
-    """One and two unwanted modes of 5–50 %: frequency and conductance within 3.5 u, of 40 sweeps at least 38."""
+    """One and two unwanted modes of 5–50 %: frequency and conductance within 3.5 u, of 24 sweeps at least 23."""
     good = 0
-    for k in range(40):
+    for k in range(24):
         circuit = one_branch(fs=1.65e6, q=200.0, r=5.0)
         plan = [(1.65e6 * (1 + rng.uniform(0.02, 0.05)), rng.uniform(120, 300), rng.uniform(0.05, 0.5))]
         if k % 2:
             plan.append((1.65e6 * (1 - rng.uniform(0.02, 0.05)), rng.uniform(120, 300), rng.uniform(0.05, 0.5)))
         fit = fit_one(F, noisy(resonator.impedance(with_modes(circuit, *plan), F), NOISE, rng), Choice(WINDOW))
         good += fit.status is FitStatus.OK and all(_found(fit, *mode) for mode in plan)
-    assert good >= 38
+    assert good >= 23
 
 
 def _found(fit: SingleFit, f_hz: float, q: float, share: float) -> bool:
