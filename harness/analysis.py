@@ -35,12 +35,14 @@ from harness.records import (
 NO_FIXTURE = Correction()
 _BOTH_PORTS_OHM = 100.0  # what a transmission log is read with: a part in series between two 50 ohm ports
 _SINGLE_SIDED_95 = 1.645
+_MORE_BRANCHES = 3  # unwanted modes looked for beyond the branches that the part number has
 
 
 def analyse(sweep: Sweep, limits: LimitSet, correction: Correction = NO_FIXTURE) -> tuple[Fit, Judgement]:
     """Fit one sweep as the limit file says, and judge it."""
     mode = limits.mode
-    choice = Choice(mode.search_hz, branches=mode.branches, span=mode.span)
+    most = mode.branches + _MORE_BRANCHES
+    choice = Choice(mode.search_hz, branches=mode.branches, most_branches=most, span=mode.span)
     fit = _fit(sweep, correction, choice, values.Wanted(mode.kind, mode.poisson))
     if fit.status is FitStatus.OK:
         fit = replace(fit, values={**fit.values, **_low_frequency(sweep, correction, low_frequency_hz(limits))})

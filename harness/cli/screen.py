@@ -141,7 +141,8 @@ def _say_first(store: str, json: bool) -> None:
 def _serials_of(station: Station, lot: str) -> list[str]:
     if lot not in {info.lot for info in station.store.lots()}:
         return []
-    return [summary.serial for summary in station.store.lot_summaries(lot)]
+    # an interrupted part is measured again under its own number
+    return [summary.serial for summary in station.store.lot_summaries(lot) if summary.final]
 
 
 def _age_h(poled: str) -> float:

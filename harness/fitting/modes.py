@@ -17,6 +17,8 @@ from harness.fitting.trial import SIGNIFICANT
 from harness.records import Complexes, Floats
 
 _Q_SHARES = (0.2, 0.5, 1.0, 2.0, 5.0)
+# what a mode must be worth to be significant in spite of noise 19 times in 20 (one-sided)
+_SURELY_SIGNIFICANT = (np.sqrt(SIGNIFICANT) + 1.645) ** 2
 _MOST_CANDIDATES = 201
 
 
@@ -71,7 +73,7 @@ def split(parameters: Floats) -> Floats:
 
 def floor(data: model.Data, parameters: Floats, free: tuple[int, ...], within_hz: tuple[float, float]) -> float:
     """Least relative conductance, at unit noise, that a further mode of the wanted one's Q, anywhere within a range but
-    two bandwidths of fs, must have to be seen at the worst place. Infinite where the sweep has a hole for it.
+    two bandwidths of fs, must have to be seen 19 times in 20 at the worst place. Infinite where the sweep has a hole.
 
     What the fitted parameters would take on of such a mode is no sign of it, so each candidate's trace in the misfit
     is first freed of theirs.
@@ -95,7 +97,7 @@ def floor(data: model.Data, parameters: Floats, free: tuple[int, ...], within_hz
     inverse = solver.inverse_normal(slopes)[0]
     energy = (traces**2).sum(axis=-1) - np.einsum("ki,ij,kj->k", common, inverse, common)
     with np.errstate(divide="ignore"):
-        least = np.sqrt(SIGNIFICANT / np.maximum(energy, 0.0))
+        least = np.sqrt(_SURELY_SIGNIFICANT / np.maximum(energy, 0.0))
     return float(least.max() / circuit.g_s[0])
 
 

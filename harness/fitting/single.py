@@ -36,8 +36,9 @@ class Choice:
 @dataclass(frozen=True, slots=True, eq=False)
 class SingleFit:
     """``status`` with a sentence; where ok, the parameters ``(P,)`` (wanted branch first), the free ones' scaled
-    covariance, the noise found (relative), the misfit (else the misfit that a plain element leaves), the data used and the floor for further modes. ``sloped``: the
-    parameters under the slope of the background that the data, which show none, would still allow (else None)."""
+    covariance, the noise found (relative), the misfit (else what a plain element leaves), the data used and the floor
+    for further modes. ``sloped``: the parameters under the slope of the background that the data, which show none,
+    would still allow (else None)."""
 
     status: FitStatus
     message: str

@@ -21,6 +21,8 @@ from harness.fitting.trial import LEAST_KNOWN_C0
 from harness.records import Caveat, Floats, Value
 
 _STEP = 1e-5
+# fr and fa exist where M ≥ 1 + √(1 + C1/C0) if nothing else is lossy; with other losses, only somewhat above that
+_SURELY_TWO_ROOTS = 1.5
 
 # how each characteristic scales with an error of |Z| (power of Z) and of frequency (power of f)
 _SCALING: dict[str, tuple[float, float]] = {
@@ -195,7 +197,12 @@ def _definition(found: Mapping[str, Floats], wanted: Wanted) -> dict[str, float]
 def accuracy(key: str, value: float, u_z_relative: float, u_f_relative: float) -> dict[str, float]:
     """What the instrument's accuracy of |Z| and of frequency adds to a characteristic of this value."""
     power_z, power_f = _SCALING.get(key, (0, 0))
-    return {"instrument": abs(power_z * value) * u_z_relative, "frequency": abs(power_f * value) * u_f_relative}
+    # an error of Z as large across as along it turns the phase by as much (radian)
+    turned = {"tan_delta": u_z_relative, "phase_max": float(np.degrees(u_z_relative))}.get(key, 0.0)
+    return {
+        "instrument": abs(power_z * value) * u_z_relative + turned,
+        "frequency": abs(power_f * value) * u_f_relative,
+    }
 
 
 def absent(values: Mapping[str, Value]) -> list[Caveat]:
@@ -203,15 +210,16 @@ def absent(values: Mapping[str, Value]) -> list[Caveat]:
     if values["c0"].value is None:
         text = "the points stay too near the resonance to tell the capacitance beside it, and what hangs on it"
         return [Caveat("not-reached", key, text) for key in _BESIDE if key in values]
-    texts = {
-        "fr": "the phase never reaches zero at this figure of merit, so there is no fr",
-        "fa": "the phase never reaches zero at this figure of merit, so there is no fa",
-    }
-    return [
-        Caveat("absent", key, texts.get(key, f"{CHARACTERISTICS[key].sign} does not exist for this circuit"))
-        for key, value in values.items()
-        if value.value is None
-    ]
+    return [_missing(key, values) for key, value in values.items() if value.value is None]
+
+
+def _missing(key: str, values: Mapping[str, Value]) -> Caveat:
+    """fr and fa do not exist at a low figure of merit; anything else that has no value was not found."""
+    m, c0, c1 = (values[name].value for name in ("m", "c0", "c1"))
+    if key in ("fr", "fa") and m is not None and c0 and c1 and m < _SURELY_TWO_ROOTS * (1 + np.sqrt(1 + c1 / c0)):
+        text = f"the phase never reaches zero at this figure of merit, so there is no {key}"
+        return Caveat("absent", key, text)
+    return Caveat("not-reached", key, f"{CHARACTERISTICS[key].sign} could not be found on the fitted curve")
 
 
 def _step_of(parameters: Floats, k: int) -> float:

@@ -20,6 +20,7 @@ _LONGEST = 12  # decimals, or digits before the point, beyond which a power of t
 
 # What the operator does where no requirement's own action applies.
 _ACTIONS = {
+    "disturbed": "Check the contact pins and seat the part again.",
     "no-part": "Look into the fixture: is there a part, does its lead hold? Load it again.",
     "shorted": "Look for solder or a bent pin between the electrodes. Load the part again.",
     "poor-contact": "Clean the contacts and load the part again.",

@@ -23,6 +23,7 @@ _CAUSES = {
     ("fs", "no-resonance"): "parts not poled or broken, or a wrong part number in the tray",
 }
 _NO_VERDICT_CAUSES = {
+    "disturbed": "worn or dirty contact pins",
     "no-part": "parts not reaching the contacts, or a broken lead",
     "shorted": "solder bridges, or contact pins touching",
     "poor-contact": "worn or dirty contact pins",

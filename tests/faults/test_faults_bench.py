@@ -36,7 +36,7 @@ NAMED: dict[str, set[str]] = {
     "drop-connection": {"connection-lost"},
 }
 # What a fault of the part itself comes to: seen by the contact check, by the first frequency again, or in the fit.
-SEEN = {"no-part", "poor-contact", "changed-during-sweep", "not-resolved", "no-resonance", "u-too-large", "bad-data"}
+SEEN = {"no-part", "poor-contact", "changed-during-sweep", "not-resolved", "disturbed", "u-too-large", "bad-data"}
 
 table: list[tuple[str, str, int, int, str]] = []
 

@@ -100,8 +100,9 @@ def fitted(**values: Value | None) -> Fit:
     return replace(OK, values={key: value for key, value in merged.items() if value is not None})
 
 
-def refused(status: FitStatus) -> Fit:
-    return Fit(status, "")
+def refused(status: FitStatus, left: float = 0.003) -> Fit:
+    """A fit that is not ok; ``left`` is the misfit that a plain element leaves of the sweep."""
+    return Fit(status, "", residual=Residual(left, 0))
 
 
 def verdict(fit: Fit = OK, conditions: Conditions = ROOM, readings: tuple[Reading, ...] = HELD) -> Judgement:
@@ -129,6 +130,7 @@ TRUTH_TABLE = [
     ("just old enough", OK, replace(ROOM, age_h=24.0), HELD, "pass", []),
     ("temperature and age not known", OK, Conditions(), HELD, "pass", []),
     ("a bad part, too hot", fitted(fs=LOW), HOT, HELD, "no verdict", ["temperature"]),
+    ("contacted, neither a resonance nor a plain element", refused(NO, 0.3), ROOM, HELD, "no verdict", ["disturbed"]),
     ("no part", refused(NO), ROOM, OPEN, "no verdict", ["no-part"]),
     ("a good fit, but no part", OK, ROOM, OPEN, "no verdict", ["no-part"]),
     ("a bad fit, but no part", fitted(fs=LOW), ROOM, OPEN, "no verdict", ["no-part"]),
