@@ -16,6 +16,7 @@ from harness.correction import fixture
 from harness.fitting import growth, model, peak, single, values
 from harness.fitting.single import Choice, SingleFit
 from harness.judging.judge import judge
+from harness.quantities import format_si
 from harness.records import (
     Caveat,
     Complexes,
@@ -69,7 +70,15 @@ def fit_log(sweep: Sweep, search_hz: tuple[float, float] | None = None) -> Fit:
     window = search_hz or whole
     if not sweep.absolute:
         return _shape_only(sweep, window)
-    return _fit(sweep, NO_FIXTURE, Choice(window, choose_series_resistance=True), values.Wanted())
+    if finite.size and not np.any((finite >= window[0]) & (finite <= window[1])):
+        span = f"the sweep goes from {format_si(whole[0], 'Hz')} to {format_si(whole[1], 'Hz')}"
+        return Fit(FitStatus.NO_RESONANCE, f"no point of the sweep lies in the search window; {span}")
+    fit = _fit(sweep, NO_FIXTURE, Choice(window, choose_series_resistance=True), values.Wanted())
+    told = any(caveat.code == "series-resistance" for caveat in fit.caveats)
+    if fit.status is not FitStatus.OK or told:
+        return fit
+    text = "whatever resistance the leads had is part of R1, and lowers Qm: this sweep does not tell them apart"
+    return replace(fit, caveats=(*fit.caveats, Caveat("leads-included", "r1", text)))
 
 
 def _fit(sweep: Sweep, correction: Correction, choice: Choice, wanted: values.Wanted) -> Fit:
@@ -222,7 +231,7 @@ def _model_caveats(found: SingleFit, sweep: Sweep) -> list[Caveat]:
     elif found.lag_one > 0:
         text = f"neighbouring residuals are alike (correlation {found.lag_one:.2f}); uncertainties are widened"
         out.append(Caveat("correlated", None, text))
-    rs = float(found.parameters[-1])
+    rs = float(model.circuit_of(found.parameters).rs_ohm)
     if rs > 0:
         text = f"a series resistance of {rs:.3g} ohm was taken as the leads' and left out of the element"
         out.append(Caveat("series-resistance", "r1", text))

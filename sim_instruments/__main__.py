@@ -8,7 +8,7 @@ import sys
 from collections.abc import Callable, Sequence
 from pathlib import Path
 
-from sim_instruments.faults import Fault, FaultMistake, read_faults
+from sim_instruments.faults import TARGETS, Fault, FaultMistake, read_faults
 from sim_instruments.physics.families import FAMILIES
 from sim_instruments.physics.lots import LotError, make_lot, read_lot
 from sim_instruments.serve import Options, serve
@@ -19,16 +19,25 @@ example:
   python -m sim_instruments serve --parts 12 --seed 7
 
 prints one line of JSON once all listen, and serves until SIGTERM or Ctrl-C:
-  {"ready": true, "hislip": "TCPIP::127.0.0.1::hislip0,PORT::INSTR",
+  {{"ready": true, "hislip": "TCPIP::127.0.0.1::hislip0,PORT::INSTR",
    "socket": "TCPIP::127.0.0.1::PORT::SOCKET", "scanner": "/dev/pts/N", "handler": "/dev/pts/M",
-   "control": "127.0.0.1:PORT", "station": "PATH"}
+   "control": "127.0.0.1:PORT", "station": "PATH"}}
 
 a faults file holds tables such as
   [[fault]]
   name = "half-block"
   when = "sweep 3"      # or "at once", or "command *IDN? 2"
   times = 1
-"""
+names: {faults}
+
+the part handler brings part after part, the next one after a final verdict. the control port takes one JSON
+object a line and answers one; from the first part put in by hand on, the handler brings nothing by itself:
+  {{"command": "present", "serial": "MD-0001"}}   part into the fixture, then its serial from the scanner
+  {{"command": "load", "serial": "MD-0001"}}      the same without a scan
+  {{"command": "eject"}}  {{"command": "scan"}}  {{"command": "lot"}}  {{"command": "status"}}
+  {{"command": "truth", "serial": "MD-0001"}}     what the part is; all parts without a serial
+  {{"command": "fault", "name": "half-block", "when": "sweep 3"}}  {{"command": "clear-faults"}}
+""".format(faults=", ".join(TARGETS))
 
 
 class _Refused(Exception):
@@ -61,6 +70,7 @@ def _parser() -> argparse.ArgumentParser:
     serve_.add_argument("--lot", type=Path, metavar="FILE", help="a lot description, instead of --parts and --family")
     serve_.add_argument("--faults", type=Path, metavar="FILE", help="scripted trouble")
     serve_.add_argument("--ms-per-point", type=_ms, default=0.02, help="time of one reading (0.02)")
+    serve_.add_argument("--by-hand", action="store_true", help="the handler brings nothing; present parts yourself")
     serve_.add_argument("--dir", type=Path, help="where to write the station file (a temporary directory)")
     return parser
 
@@ -96,7 +106,7 @@ def _tray(options: argparse.Namespace) -> Tray:
 def _options(options: argparse.Namespace) -> Options:
     if options.dir is not None and not options.dir.is_dir():
         raise _Refused(f"{options.dir}: there is no such directory for the station file; make it first")
-    return Options(options.seed, _faults(options.faults), options.ms_per_point, options.dir)
+    return Options(options.seed, _faults(options.faults), options.ms_per_point, options.dir, options.by_hand)
 
 
 def _faults(path: Path | None) -> Sequence[Fault]:

@@ -59,12 +59,15 @@ class _Nest:
 
 @dataclass(slots=True)
 class Bench:
-    """``empty``: impedance of the open fixture. ``by_hand``: parts come through the control port, not by themselves."""
+    """``empty``: impedance of the open fixture. ``by_hand``: parts come through the control port, not by themselves.
+    ``fed``: serials finally judged after the handler had brought them by itself.
+    """
 
     lot: Sequence[Specimen]
     empty: Impedance
     by_hand: bool = False
     verdicts: dict[str, list[Verdict]] = field(default_factory=dict)
+    fed: set[str] = field(default_factory=set)
     _nest: _Nest | None = None
 
     # ── the lot ──────────────────────────────────────────────────────────────────────────────
@@ -128,6 +131,8 @@ class Bench:
         self.verdicts.setdefault(self._nest.specimen.serial, []).append(verdict)
         self._nest.pulled = self._nest.measured = False
         if verdict.outcome in FINAL:
+            if not self.by_hand:
+                self.fed.add(self._nest.specimen.serial)
             self._nest = None
 
     # ── the label ────────────────────────────────────────────────────────────────────────────

@@ -46,8 +46,9 @@ class Rig:
         faults: Sequence[Fault] = (),
         s_per_point: float = 2e-5,
         wait_s: float = 60.0,
+        by_hand: bool = False,
     ) -> None:
-        self.bench = Bench(lot, empty)
+        self.bench = Bench(lot, empty, by_hand)
         self.faults = FaultBook(faults)
         self.analyser = Analyser(self.bench, seed=seed, faults=self.faults, s_per_point=s_per_point)
         self._handler = Handler(self.bench, self.faults)
@@ -112,6 +113,10 @@ class Rig:
         """Put a part in by hand, the next one of the lot if no serial is named; waits for the one that sits there."""
         wanted = None if serial is None else self.bench.find(serial)
         self.bench.by_hand = True
+        if wanted is not None and wanted.serial in self.bench.fed:
+            # the handler was quicker than the hand: this part has been in, and has its verdict
+            self.bench.fed.remove(wanted.serial)
+            return wanted.serial
         async with self._queue:
             await self._wait_for_room(wanted)
             specimen = wanted or self.bench.next_in_tray()

@@ -30,6 +30,7 @@ class Options:
     faults: Sequence[Fault]
     ms_per_point: float
     directory: Path | None
+    by_hand: bool = False
 
 
 async def serve(tray: Tray, options: Options) -> None:
@@ -37,7 +38,14 @@ async def serve(tray: Tray, options: Options) -> None:
     told = asyncio.Event()
     for number in (signal.SIGTERM, signal.SIGINT):
         asyncio.get_running_loop().add_signal_handler(number, told.set)
-    rig = Rig(tray.lot, tray.empty, seed=options.seed, faults=options.faults, s_per_point=options.ms_per_point / 1000)
+    rig = Rig(
+        tray.lot,
+        tray.empty,
+        seed=options.seed,
+        faults=options.faults,
+        s_per_point=options.ms_per_point / 1000,
+        by_hand=options.by_hand,
+    )
     try:
         addresses = await rig.open()
         with ExitStack() as stack:

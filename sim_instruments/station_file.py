@@ -29,6 +29,9 @@ class FixtureValues:
     temperature_degc: float
 
 
+_IDENTITY = r"Hollowmere Instruments,ZA-12,HM\d+"
+
+
 def station_text(addresses: Listening, fixture: FixtureValues) -> str:
     """TOML ready for ``--station``. The fixture's values are true; the stated u are what a correction would leave."""
     return f"""\
@@ -40,6 +43,7 @@ station = "sim-bench-1"
 [bench.meter]
 resource = "{addresses.hislip}"
 dialect = "scpi-analyser"
+identity = '{_IDENTITY}'
 timeout = "5 s"
 
 [bench.scanner]

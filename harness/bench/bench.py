@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
 
@@ -60,7 +61,7 @@ class Bench:
             self._meter: Meter = ScpiMeter(meter.resource, meter.dialect, timeout_s=meter.timeout_s)
         try:
             with _starting():
-                self.instrument = _instrument(self._meter.identify())
+                self.instrument = _expected(_instrument(self._meter.identify()), meter.identity)
                 if devices.scanner is not None:
                     self._scanner = SerialScanner(devices.scanner.resource, devices.scanner.baud)
                 if devices.handler is not None:
@@ -147,6 +148,18 @@ def check(devices: Devices) -> None:
     """Raise SetupError for a meter's resource or dialect that is wrong. Opens nothing."""
     with _starting():
         ScpiMeter(devices.meter.resource, devices.meter.dialect)
+
+
+def _expected(found: Instrument, pattern: str | None) -> Instrument:
+    """The instrument, where it is the one that the station file expects. Raises StationError."""
+    named = f"{found.maker},{found.model},{found.serial}"
+    if pattern is not None and not re.fullmatch(pattern, named):
+        raise StationError(
+            f"the meter names itself '{named}', which is not what the station file expects ({pattern}).",
+            place=found.resource,
+            remedy="Connect the right one, or correct identity in [bench.meter].",
+        )
+    return found
 
 
 def _instrument(identity: Identity) -> Instrument:

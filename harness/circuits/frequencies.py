@@ -91,10 +91,13 @@ def extremum_hz(circuit: Circuit, low_hz: float, high_hz: float, *, greatest: bo
 
 
 def zero_phase_hz(circuit: Circuit, low_hz: float, high_hz: float, *, last: bool) -> Floats:
-    """First (else last) frequency in a range where Im Z crosses zero, shape ``S``; NaN where it does not."""
+    """Where Im Z first rises through zero in a range (``last``: last falls), shape ``S``; NaN where it does not.
+
+    A part turns inductive at fr and capacitive again at fa, so one crossing can never be both.
+    """
     f = np.linspace(low_hz, high_hz, _FINE_GRID)
     sign = np.sign(resonator.impedance(circuit, f).imag)
-    crosses = sign[..., :-1] * sign[..., 1:] < 0
+    crosses = (sign[..., :-1] * sign[..., 1:] < 0) & (sign[..., 1:] < 0 if last else sign[..., 1:] > 0)
     k = f.size - 2 - crosses[..., ::-1].argmax(axis=-1) if last else crosses.argmax(axis=-1)
     found = root(lambda g: _impedance_at(circuit, g).imag, f[k], f[k + 1])
     return np.where(crosses.any(axis=-1), found, np.nan)

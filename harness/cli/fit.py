@@ -9,7 +9,7 @@ import typer
 
 from harness.cli.options import FixtureOption, JsonOption
 from harness.cli.output import console, print_error, print_json_line
-from harness.errors import FileMistakes, SetupError
+from harness.errors import FileMistakes, Mistake, SetupError
 
 
 def fit(
@@ -29,6 +29,7 @@ def fit(
     Example: ringtrue fit disc-07.csv --search 1.5MHz 1.9MHz
     """
     from harness.analysis import fit_log
+    from harness.records import FitStatus
     from harness.replay import read_file
     from harness.report import json_form, terminal
 
@@ -44,6 +45,8 @@ def fit(
             troubles.append(trouble)
             forms.append(json_form.bad_file_form(str(path), trouble.mistakes[0].sentence()))
             continue
+        if found.status is FitStatus.BAD_DATA:
+            troubles.append(FileMistakes([Mistake(str(path), None, "", f"{found.message}.")]))
         forms.append(json_form.fit_form(str(path), found))
         if not json:
             out.print(terminal.fit_table(str(path), found))

@@ -134,7 +134,9 @@ def replay_summary(results: Sequence[Replayed]) -> str:
     changed = sum(r.original.record.judgement.verdict is not r.judgement.verdict for r in stored if r.original)
     differ = "differs" if changed == 1 else "differ"
     was = f" {changed} of {len(stored)} {differ} from the verdict on record, which stays." if stored else ""
-    return f"{counted(len(results), 'sweep', 'sweeps')}: {told(counts) or 'nothing'}.{was}"
+    empty = sum(any(reason.code == "no-sweep" for reason in r.judgement.reasons) for r in results)
+    without = f" {counted(empty, 'attempt', 'attempts')} had no sweep to judge." if empty else ""
+    return f"{counted(len(results), 'attempt', 'attempts')}: {told(counts) or 'nothing'}.{without}{was}"
 
 
 def told(counts: Mapping[str, int]) -> str:

@@ -172,8 +172,7 @@ def _one_more(data: Data, grown: Grown, window_hz: tuple[float, float], *, least
 
     ``least_gain``: fall of misfit²/noise² that the best candidate must promise as it stands.
     """
-    z = data.r_ohm[0] + 1j * data.x_ohm[0]
-    left = modes.leftover(data.f_hz[0], z, grown.fitted.weight[0], grown.circuit)
+    left = modes.leftover(data, grown.fitted.weight[0], grown.circuit)
     branches, gain = modes.next_branches(left, grown.circuit, used_hz(data))
     if gain <= least_gain * float(grown.fitted.scale[0]) ** 2:
         return None

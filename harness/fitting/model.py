@@ -1,7 +1,8 @@
 """The misfit of a circuit to impedances, and its exact derivatives.
 
 Parameters of one circuit with M branches, ``P = 3 + 4M``, in this order:
-ln C, tan δ, then per branch ln f, ln Q, ln G, θ, and last Rs. Sweeps are rows; everything is real arithmetic
+ln C, tan δ, then per branch ln f, ln Q, ln G, θ, and last ρ = Rs·G of the wanted branch, the first: nothing here has a
+unit, so that no step limit depends on one. Sweeps are rows; everything is real arithmetic
 on separate real and imaginary parts: NumPy's complex product may round differently in a vector's body and tail,
 and a sweep's bits must not depend on the batch it travels in.
 """
@@ -61,7 +62,7 @@ def circuit_of(parameters: Floats) -> Circuit:
         np.exp(branch[..., LN_Q]),
         np.exp(branch[..., LN_G]),
         branch[..., THETA],
-        parameters[..., -1],
+        parameters[..., -1] * np.exp(-branch[..., 0, LN_G]),
     )
 
 
@@ -70,7 +71,8 @@ def parameters_of(circuit: Circuit) -> Floats:
     branch = np.stack([np.log(circuit.f_hz), np.log(circuit.q), np.log(circuit.g_s), circuit.theta_rad], axis=-1)
     flat = branch.reshape((*branch.shape[:-2], -1))
     head = np.stack([np.log(circuit.c_f), circuit.tan_delta], axis=-1)
-    return np.concatenate([head, flat, np.asarray(circuit.rs_ohm)[..., None]], axis=-1)
+    share = np.asarray(circuit.rs_ohm) * circuit.g_s[..., 0]
+    return np.concatenate([head, flat, share[..., None]], axis=-1)
 
 
 def misfit(parameters: Floats, data: Data) -> Floats:
@@ -100,7 +102,7 @@ def misfit_and_slopes(parameters: Floats, data: Data, free: tuple[int, ...]) -> 
     slopes = _static_slopes(circuit, omega_c, turn)
     for m, branch in enumerate(branches):
         slopes |= _branch_slopes(circuit, data.f_hz, m, branch, turn)
-    slopes[parameters.shape[-1] - 1] = scale, np.zeros_like(scale)
+    _add_series_resistance(slopes, circuit, (scale, np.zeros_like(scale)))
     return value, [_joined(*slopes[k]) for k in free], _joined(scale, scale)
 
 
@@ -125,11 +127,19 @@ def log_misfit_and_slopes(parameters: Floats, data: Data, free: tuple[int, ...])
     slopes = _static_slopes(circuit, omega_c, turn)
     for m, branch in enumerate(branches):
         slopes |= _branch_slopes(circuit, data.f_hz, m, branch, turn)
-    slopes[parameters.shape[-1] - 1] = rm * scale / model2, -xm * scale / model2
+    _add_series_resistance(slopes, circuit, (rm * scale / model2, -xm * scale / model2))
     return value, [_joined(*slopes[k]) for k in free], _joined(scale, scale)
 
 
 _Pair = tuple[Floats, Floats]  # real and imaginary part, each (B, N)
+
+
+def _add_series_resistance(slopes: dict[int, _Pair], circuit: Circuit, by_rs: _Pair) -> None:
+    """Rs = ρ/G: its slopes by ρ, the last parameter, and by the wanted branch's ln G."""
+    rs, r1 = circuit.rs_ohm[..., None], 1 / circuit.g_s[..., 0, None]
+    slopes[FIRST_BRANCH + BRANCH * circuit.f_hz.shape[-1]] = by_rs[0] * r1, by_rs[1] * r1
+    at = FIRST_BRANCH + LN_G
+    slopes[at] = slopes[at][0] - by_rs[0] * rs, slopes[at][1] - by_rs[1] * rs
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -24,18 +24,21 @@ _MOST_CANDIDATES = 201
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Leftover:
-    """What a fit left of one sweep: Y measured − Y fitted ``(N,)`` in siemens, over weights 1/|Y| (0: dropped)."""
+    """What a fit left of one sweep: Y measured − Y fitted ``(N,)`` in siemens, over weights that make it the misfit:
+    1/|Y|, or 1/(σ|Y|²) where σ is given (0: dropped)."""
 
     f_hz: Floats
     y_s: Complexes
     weight: Floats
 
 
-def leftover(f_hz: Floats, z_ohm: Complexes, weight: Floats, circuit: Circuit) -> Leftover:
+def leftover(data: model.Data, weight: Floats, circuit: Circuit) -> Leftover:
     """One sweep's leftover; ``circuit`` is a single circuit, its series resistance taken off first."""
+    f_hz, z_ohm = data.f_hz[0], data.r_ohm[0] + 1j * data.x_ohm[0]
     fitted = resonator.admittance(circuit, f_hz)
     measured = 1 / np.where(weight > 0, z_ohm - circuit.rs_ohm, 1.0)
-    return Leftover(f_hz, np.where(weight > 0, measured - fitted, 0), weight / np.abs(fitted))
+    scale = np.abs(fitted) if data.sigma_ohm is None else data.sigma_ohm[0] * np.abs(fitted) ** 2
+    return Leftover(f_hz, np.where(weight > 0, measured - fitted, 0), weight / scale)
 
 
 def next_branches(left: Leftover, circuit: Circuit, window_hz: tuple[float, float]) -> tuple[Floats, float]:

@@ -11,13 +11,16 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from harness.fitting import growth, model, modes, plain, start, trial
+from harness.circuits import resonator
+from harness.fitting import growth, model, modes, noise, plain, start, trial
 from harness.fitting.growth import Grown
 from harness.fitting.model import Data
 from harness.fitting.trial import Fitted
 from harness.records import Complexes, FitStatus, Floats
 
 _REACHES = (10.0, 5.0)  # bandwidths to either side of the conductance peak
+_NOISE_ROUNDS = 2  # a first fit under the wrong weights leaves too much, and tells too much noise
+_ELSEWHERE = 0.02  # misfit that a circuit resonating outside the sweep may leave, to be believed
 _INNER = 0.7  # share of the span that the refit for the model term keeps
 
 
@@ -61,7 +64,8 @@ class SingleFit:
 def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: float | None = None) -> SingleFit:
     """Fit one sweep (``(N,)`` hertz and ohm, corrected for its fixture).
 
-    ``noise_relative``: the instrument's own noise; the covariance is never scaled below it.
+    ``noise_relative``: the instrument's own noise, a share of |Z|; the covariance is never scaled below it. None: how
+    the noise goes with |Z| is told from what is left over.
     """
     good = np.isfinite(f_hz) & (f_hz > 0) & np.isfinite(z_ohm.real) & np.isfinite(z_ohm.imag) & (z_ohm != 0)
     dropped = int(good.size - good.sum())
@@ -69,18 +73,27 @@ def fit_one(f_hz: Floats, z_ohm: Complexes, choice: Choice, *, noise_relative: f
     f, z = f_hz[good][order], z_ohm[good][order]
     if f.size < 10 or f[-1] <= f[0]:
         return _refused(FitStatus.BAD_DATA, f"only {f.size} usable points; at least 10 are needed", f, z, dropped)
-    whole = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)))
-    begin, located = _locate(whole, choice)
-    # what bounced stays out from here on: each larger circuit would have to find it again
-    whole = whole.weighted(located.weight)
-    data, grown = _best(whole, choice, begin, located)
+    data, grown = _from_the_start(f, z, None, choice)
+    for _ in range(_NOISE_ROUNDS if noise_relative is None else 0):
+        sigma = noise.sigma_of(resonator.impedance(grown.circuit, f), z) if _word(data, grown, choice) == "ok" else None
+        if sigma is None:
+            break
+        data, grown = _from_the_start(f, z, sigma, choice)
     word = _word(data, grown, choice)
     if word != "ok":
         status = FitStatus(word)
-        return _refused(status, _explain(status, data, grown.fitted), f, z, dropped)
+        return _refused(status, _explain(status, data, grown.fitted), f, z, dropped, grown.fitted)
     if choice.choose_series_resistance:
         grown = growth.with_series_resistance(data, grown)
     return _finish(data, grown, choice, dropped, noise_relative)
+
+
+def _from_the_start(f: Floats, z: Complexes, sigma: Floats | None, choice: Choice) -> tuple[Data, Grown]:
+    """Located, and grown to what the data ask for, under noise of a share of |Z| or of ``sigma`` ``(N,)``."""
+    whole = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)), None if sigma is None else sigma[None, :])
+    begin, located = _locate(whole, choice)
+    # what bounced stays out from here on: each larger circuit would have to find it again
+    return _best(whole.weighted(located.weight), choice, begin, located)
 
 
 def _best(whole: Data, choice: Choice, begin: Floats, located: Fitted) -> tuple[Data, Grown]:
@@ -227,15 +240,21 @@ def refits(fit: SingleFit, impedances: Sequence[Complexes]) -> list[Floats]:
     begin = np.repeat(fit.parameters[None, :], len(z), axis=0)
     moved = growth.elsewhere(fit.parameters, fit.free)
     begin[1] = fit.parameters if moved is None else moved
-    again = trial.fit_branches(model.data_of(f, z, weight), begin, fit.free, rejecting=False)
+    sigma = None if data.sigma_ohm is None else np.repeat(data.sigma_ohm, len(z), axis=0)
+    again = trial.fit_branches(model.data_of(f, z, weight, sigma), begin, fit.free, rejecting=False)
     # the wanted branch must stay what it is; how the background's slope is shared out may change
     near = np.abs(again.parameters - begin)[:, : model.FIRST_BRANCH + model.BRANCH].max(axis=-1) < 1.0
     fine = again.converged & near & (weight.sum(axis=-1) > fit.parameters.size)
     return [row if ok else fit.parameters for row, ok in zip(again.parameters, fine, strict=True)]
 
 
-def _refused(status: FitStatus, message: str, f: Floats, z: Complexes, dropped: int) -> SingleFit:
+def _refused(
+    status: FitStatus, message: str, f: Floats, z: Complexes, dropped: int, tried: Fitted | None = None
+) -> SingleFit:
+    """``tried``: the circuit that was found wanting; one that resonates elsewhere explains the sweep all the same."""
     empty, left = np.full(7, np.nan), plain.misfit(f, z)
+    if tried is not None and tried.converged[0] and tried.weight.all():
+        left = float(np.fmin(left, tried.relative_rms[0]))
     data = model.data_of(f[None, :], z[None, :], np.ones((1, f.size)))
     return SingleFit(status, message, empty, (), np.empty((0, 0)), np.nan, left, 0, data, np.inf, dropped)
 
@@ -246,6 +265,11 @@ def _explain(status: FitStatus, data: Data, fitted: Fitted) -> str:
 
 
 def _no_resonance(data: Data, fitted: Fitted) -> str:
+    circuit = model.circuit_of(fitted.parameters[0])
+    fs, q = float(circuit.f_hz[0]), float(circuit.q[0])
+    low, high = growth.used_hz(data)
+    if fitted.converged[0] and q > 2 and fitted.relative_rms[0] < _ELSEWHERE and not low <= fs <= high:
+        return f"the resonance lies outside the sweep, near {fs:.4g} Hz"
     phase = np.degrees(np.arctan2(data.x_ohm[0], data.r_ohm[0]))[data.weight[0] > 0]
     level = np.median(np.hypot(data.r_ohm[0], data.x_ohm[0])[data.weight[0] > 0])
     middle = float(np.median(phase))

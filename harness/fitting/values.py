@@ -224,10 +224,8 @@ def _missing(key: str, values: Mapping[str, Value]) -> Caveat:
 
 def _step_of(parameters: Floats, k: int) -> float:
     """A step small against the resonance's width for a frequency, small against one for the rest."""
-    if k == parameters.size - 1:
-        return float(_STEP * np.exp(-parameters[model.FIRST_BRANCH + model.LN_G]))
     branch, kind = divmod(k - model.FIRST_BRANCH, model.BRANCH)
-    if k >= model.FIRST_BRANCH and kind == model.LN_F:
+    if model.FIRST_BRANCH <= k < parameters.size - 1 and kind == model.LN_F:
         return float(_STEP * np.exp(-parameters[model.FIRST_BRANCH + branch * model.BRANCH + model.LN_Q]))
     return _STEP
 

@@ -11,6 +11,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 
+from harness.errors import StationError
 from harness.judging.application import figures
 from harness.judging.contact import ContactCheck, check_contact, check_repeat
 from harness.judging.referring import referred
@@ -86,6 +87,17 @@ def _values(fit: Fit, limits: LimitSet, conditions: Conditions) -> tuple[dict[st
 
 def _each_once(caveats: tuple[Caveat, ...]) -> tuple[Caveat, ...]:
     return tuple(dict.fromkeys(caveats))
+
+
+def refuse_conditions(conditions: Conditions, spec: ConditionSpec) -> None:
+    """Raise StationError where what is known before the first part already forbids every verdict."""
+    found = _condition_reasons(conditions, spec)
+    if found:
+        raise StationError(
+            f"no part of this lot could get a verdict now: {found[0].text}.",
+            place="conditions",
+            remedy="Wait, or put the station in order; then start the lot.",
+        )
 
 
 def _condition_reasons(conditions: Conditions, spec: ConditionSpec) -> tuple[Reason, ...]:

@@ -116,6 +116,16 @@ def _min_max(kept: Tables) -> Iterator[Finding]:
             yield Finding((*path, "max"), f"{block['max']:g} is also min: nothing lies between.", "Correct them.")
 
 
+def _coupling_at_most_one(kept: Tables) -> Iterator[Finding]:
+    """A coupling factor is a number below one: 38 is meant as a per cent."""
+    for path, block in tables(kept, "require"):
+        if block.get("characteristic") in ("keff", *COUPLING_KIND):
+            for key, value in zip(("min", "max"), limits_si(block, "min", "max"), strict=True):
+                if value is not None and value > 1:
+                    text = f"{block[key]:g} is more than a coupling factor can be."
+                    yield Finding((*path, key), text, f'Write {block[key] / 100:g}, or add unit = "%".')
+
+
 def _no_limit(kept: Tables) -> Iterator[Finding]:
     for path, block in tables(kept, "require"):
         if "min" not in block and "max" not in block:
@@ -276,6 +286,7 @@ CHECKS: tuple[Callable[[Tables], Iterator[Finding]], ...] = (
     _no_limit,
     _twice,
     _one_frequency,
+    _coupling_at_most_one,
     _information_only,
     _at,
     _kind,

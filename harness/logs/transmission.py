@@ -50,7 +50,7 @@ def transmission_to_z(points: Points, fixture: str | None, mistakes: Mistakes) -
 
 
 def _check_series(points: Points, level: Floats, mistakes: Mistakes) -> None:
-    remedy = "Say how the part was connected (fixture series or shunt)."
+    remedy = "Say how the part was connected: --fixture series or --fixture shunt."
     peak, dip = int(np.argmax(level)), int(np.argmin(level))
     if level[peak] > 1:
         text = "S21 is above 0 dB, which no part alone can do, so its level means nothing without the fixture."

@@ -23,6 +23,9 @@ _TOO_MANY_DECIMALS = 8  # beyond which a power of ten reads better
 _LEAST_POWER = -15
 
 
+_FINEST, _FINE_DIGITS = 1e-9, 9
+
+
 def uncertain(value: float | None, u: float | None, unit: str, *, power: int | None = None) -> str:
     """A value with its expanded uncertainty U = 2u (k = 2), both in one prefix, to two significant digits of U.
 
@@ -36,6 +39,8 @@ def uncertain(value: float | None, u: float | None, unit: str, *, power: int | N
         return NOTHING
     if u is None or not math.isfinite(u) or u <= 0:
         return format_si(value, unit, digits=_DIGITS)
+    if COVERAGE * u < abs(value) * _FINEST:  # noise-free data: more digits would only be rounding
+        return format_si(value, unit, digits=_FINE_DIGITS)
     expanded = Decimal(f"{COVERAGE * u:.1e}")
     last = max(expanded.adjusted() - 1, Decimal(repr(float(value))).adjusted() - _MOST_DIGITS + 1)
     power = _suiting_power(value, COVERAGE * u, unit, last) if power is None else power

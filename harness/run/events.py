@@ -41,6 +41,13 @@ class Refused:
 
 
 @dataclass(frozen=True, slots=True)
+class PassedOver:
+    """A serial of a list whose verdict in this lot stands already: the lot goes on after it."""
+
+    serial: str
+
+
+@dataclass(frozen=True, slots=True)
 class Opened:
     """An attempt has begun: durable before the first instrument command."""
 
@@ -88,4 +95,6 @@ class Ended:
     note: str
 
 
-Event = Ready | Interrupted | Waiting | Refused | Opened | Measuring | Recorded | BenchTrouble | Held | Ended
+Event = (
+    Ready | Interrupted | Waiting | Refused | PassedOver | Opened | Measuring | Recorded | BenchTrouble | Held | Ended
+)

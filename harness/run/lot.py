@@ -6,10 +6,11 @@ from collections.abc import Callable, Generator, Iterator
 
 from harness.bench import Bench, BenchFault
 from harness.errors import StationError
+from harness.judging.judge import refuse_conditions
 from harness.judging.requirements import refuse_empty_zones
 from harness.planning.expected import least_u
 from harness.records import Record, Verdict
-from harness.run.events import BenchTrouble, Ended, Event, Interrupted, Ready, Refused, Waiting
+from harness.run.events import BenchTrouble, Ended, Event, Interrupted, PassedOver, Ready, Refused, Waiting
 from harness.run.part import Job, attempt, early_codes
 from harness.run.serials import Serial, SerialSource, Wait, pattern_fault
 from harness.run.watch import LotWatch
@@ -31,6 +32,7 @@ def screen_lot(
     cannot be reopened or the handler does not take a verdict.
     """
     store, bench = station.store, station.bench
+    refuse_conditions(job.conditions, job.limits.conditions)
     refuse_empty_zones(job.limits, least_u(job.limits, bench.instrument, job.conditions))
     bench.refuse_untellable(grade.name for grade in job.limits.grades)
     lot = store.open_lot(job.lot, job.limits, job.operator, job.clock())
@@ -68,11 +70,14 @@ def _serials(
 
 def _ahead(
     bench: Bench, store: Store, job: Job, source: SerialSource, stopping: Callable[[], bool]
-) -> Generator[Event, None, Serial | Refused | Wait]:
+) -> Generator[Event, None, Serial | Refused | PassedOver | Wait]:
     """The serial is known first; its part is asked for only if it may be measured."""
     serial = source.next(_TURN_S)
     if isinstance(serial, Wait):
         return serial
+    standing = store.standing(job.lot, serial.text, job.conditions.element)
+    if standing is not None and standing.verdict is not Verdict.NONE:
+        return PassedOver(serial.text)  # a list is begun again from its top
     refusal = _refusal(store, job, serial)
     if refusal is not None:
         return refusal

@@ -29,6 +29,9 @@ class Meter(Block):
 
     resource: Name = Field(description='VISA resource, such as "TCPIP::192.0.2.7::hislip0::INSTR".')
     dialect: Name = Field(description="The words it speaks: a shipped dialect's name, or the path of a dialect file.")
+    identity: Annotated[str, r.pattern()] | None = Field(
+        default=None, description='Regular expression for "maker,model,serial"; another instrument is refused.'
+    )
     timeout: Seconds = Field(default=5.0, description='Longest wait for an answer, such as "5 s".')
 
 
@@ -112,7 +115,7 @@ def parse_station(text: str, file: str) -> StationSpec:
         doc.identity.station,
         doc.identity.operator,
         Devices(
-            Device("meter", meter.resource, meter.dialect, timeout_s=meter.timeout),
+            Device("meter", meter.resource, meter.dialect, timeout_s=meter.timeout, identity=meter.identity),
             _line("scanner", doc.bench.scanner),
             _line("handler", doc.bench.handler),
         ),

@@ -6,6 +6,7 @@ from contextlib import ExitStack
 from pathlib import Path
 
 from harness.bench import Bench, check
+from harness.errors import SetupError, StationError
 from harness.records import Conditions, Correction
 from harness.station.file import StationSpec
 from harness.station.lock import StationLock
@@ -46,14 +47,28 @@ def open_station(spec: StationSpec, path: Path, store_url: str, command: str, no
     """Take the station's lock, open its store for writing and its bench. Raises SetupError or StationError.
 
     The store comes before the bench: nothing may be measured that could not be recorded. A station file that names
-    what cannot be is refused before either, so that nothing is written.
+    what cannot be is refused before either, and a store that was made for a bench that then does not answer is taken
+    back, so that a start that fails writes nothing.
     """
     check(spec.devices)
     with ExitStack() as stack:
         lock = StationLock(path, command, now)
         stack.callback(lock.release)
+        new = not Path(store_url).exists()
         store = open_store(store_url, mode="write", now=now, made_by=made_by)
         stack.callback(store.close)
-        bench = stack.enter_context(Bench(spec.devices))
+        try:
+            bench = stack.enter_context(Bench(spec.devices))
+        except (SetupError, StationError):
+            if new and not store.lots():
+                stack.close()
+                _take_back(Path(store.place))
+            raise
         return Station(spec, bench, store, stack.pop_all())
     raise AssertionError("unreachable")
+
+
+def _take_back(store: Path) -> None:
+    """Remove a store that this very start made and nothing was written to, with its log."""
+    for path in (store, store.with_name(store.name + "-wal"), store.with_name(store.name + "-shm")):
+        path.unlink(missing_ok=True)

@@ -208,7 +208,8 @@ def _bounded(value: float, above: float | None, least: float | None, below: floa
     if least is not None and not value >= least:
         raise Unreadable(f"{value:g} is below {least:g}.")
     if below is not None and not value < below:
-        raise Unreadable(f"{value:g} is not below {below:g}.")
+        remedy = f'A share is written "{value:g} %" or {value / 100:g}.' if below == 1.0 and value > 1 else ""
+        raise Unreadable(f"{value:g} is not below {below:g}.", remedy)
     return value
 
 

@@ -364,14 +364,14 @@ def closed_port() -> int:
 
 @pytest.mark.parametrize("resource", ["TCPIP::127.0.0.1::{port}::SOCKET", "TCPIP::127.0.0.1::hislip0,{port}::INSTR"])
 def test_a_refused_connection_exits_3(resource: str, desk: Path) -> None:
-    """Nobody listens: station trouble, named; no lot is opened."""
+    """Nobody listens: station trouble, named; nothing is written."""
     at = resource.format(port=closed_port())
     (desk / "s.toml").write_text(STATION.format(resource=at, dialect="scpi-analyser"), encoding="utf-8")
     ran = run("screen", "L-1", "--limits", LIMITS, "--station", "s.toml", "--store", "s.db", "--operator", "x")
     assert ran.code == 3
     assert len(message_of(ran.err)) == 1
     assert at in ran.err
-    assert "no lot 'L-1'" in run("lot", "L-1", "--store", "s.db").err
+    assert not (desk / "s.db").exists()
 
 
 def test_a_silent_instrument_exits_3(desk: Path) -> None:

@@ -9,7 +9,7 @@ from run_fakes import FakeBench, FakeStation, Turns, job, limits, new_store
 
 from harness.errors import SetupError
 from harness.records import Verdict
-from harness.run.events import Event, Interrupted, Measuring, Ready, Recorded, Refused
+from harness.run.events import Event, Interrupted, Measuring, PassedOver, Ready, Recorded
 from harness.run.lot import screen_lot
 from harness.run.part import Job
 from harness.run.serials import FromList, Numbered, SerialSource, auto_start
@@ -36,13 +36,13 @@ def contents(folder: Path) -> bytes:
 
 
 def test_same_limits_continue_the_lot(tmp_path: Path) -> None:
-    """A second run under the same hash goes on: what is judged is refused, the rest is measured."""
+    """A second run under the same hash goes on: what is judged is passed over, the rest is measured."""
     with new_store(tmp_path) as store:
         screened(store, FakeBench(), FromList([A, B]), job())
     with new_store(tmp_path) as store:
         events = screened(store, FakeBench(), FromList([A, B, C]), job())
         assert events[0] == Ready("station 1", "L-7", 2, FromList.prompt)
-        assert [event.serial for event in events if isinstance(event, Refused)] == [A, B]
+        assert [event.serial for event in events if isinstance(event, PassedOver)] == [A, B]
         assert [event.record.opening.serial for event in events if isinstance(event, Recorded)] == [C]
         assert store.lot_info("L-7").records == 3
 
