@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import sys
 from pathlib import Path
+from shutil import which
 from typing import TYPE_CHECKING, Annotated
 
 import typer
@@ -73,6 +75,7 @@ def _what_next(out: Console, files: Files, lot: str, limits: Path) -> None:
     from rich.text import Text
 
     store = f"--store {files.store}"
+    ringtrue = "ringtrue" if which("ringtrue") else sys.argv[0]
     lines = [
         f"Store:          {files.store}",
         f"Report:         {files.report}   (open it in a browser)",
@@ -80,10 +83,10 @@ def _what_next(out: Console, files: Files, lot: str, limits: Path) -> None:
         f"Tighter limits: {files.tighter}",
         "",
         "Try next:",
-        f"  ringtrue lot {lot} {store}",
-        f"  ringtrue history MD-0001 {store}",
-        f"  ringtrue replay {lot} --limits {files.tighter} {store}",
-        f"  ringtrue record verify {store}",
-        f"  ringtrue limits explain {limits}",
+        f"  {ringtrue} lot {lot} {store}",
+        f"  {ringtrue} history MD-0001 {store}",
+        f"  {ringtrue} replay {lot} --limits {files.tighter} {store}",
+        f"  {ringtrue} record verify {store}",
+        f"  {ringtrue} limits explain {limits}",
     ]
     out.print(Text("\n".join(["", *lines])), soft_wrap=True)

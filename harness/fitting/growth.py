@@ -19,6 +19,7 @@ _MOST_PHASE = 0.6  # rad: a branch turned further is no resonance but a misfit o
 _LEAST_Q_SHARE = 0.4  # of the wanted Q: a broader hump is a misfit of the background, not a mode
 ALIKE = 0.3  # correlation of neighbouring residuals from which something is left over
 _FAR = 2.0  # times fs: where the branch stands that gives the background its slope
+_ROUNDING = 4.0  # misfit²/noise² that weights moving with the model may cost
 _TINY = 1e-6  # of C: how much of that branch is put in to see what it would do
 
 
@@ -70,7 +71,9 @@ def bear_slope(data: Data, begin: Grown) -> Grown:
     moved[list(free)] += np.clip(step[:-1], -0.5, 0.5)
     moved[size] += np.log1p(step[-1])
     sloped = Grown(trial.fit_branches(data, moved[None, :], (*free, size)), (*free, size))
-    return sloped if sloped.fitted.converged[0] and _sane(data, sloped) else begin
+    # the slope's size may go to nothing, so more misfit than before is a solution that was not reached
+    lost = sloped.fitted.cost[0] - begin.fitted.cost[0] > _ROUNDING * float(begin.fitted.scale[0]) ** 2
+    return sloped if sloped.fitted.converged[0] and not lost and _sane(data, sloped) else begin
 
 
 def with_least_slope(data: Data, begin: Grown) -> Floats | None:
